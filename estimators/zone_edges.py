@@ -1,0 +1,248 @@
+"""A zone's boundary as straight pieces, in a tree of balls that finds those near a place.
+
+Each level of detail holds the whole boundary in pieces within a stated distance of the true edges. Over each ring
+lies a binary tree: a node covers consecutive pieces and knows a ball around them. A far node can stand for its
+pieces as one straight line, since seen from outside the ball they sweep the same angle.
+"""
+
+from __future__ import annotations
+
+from itertools import pairwise
+from typing import Final, NamedTuple
+
+import numpy as np
+from numpy.typing import NDArray
+
+from estimators.defaults import EDGE_DEVIATION_FINEST_M
+from estimators.frames import MEAN_RADIUS_M, WGS84, earth_centred_m
+from estimators.zone import ZoneShape
+
+FloatArray = NDArray[np.float64]
+IntArray = NDArray[np.int64]
+
+LEVELS: Final = 8
+_LONGEST_PIECE_M: Final = 2000.0
+_GIANT_RADIUS_M: Final = 0.7 * MEAN_RADIUS_M
+
+
+class ZoneEdges(NamedTuple):
+    """Boundary of a zone, ready for the compiled kernels.
+
+    Attributes
+    ----------
+    vertices_m : ndarray, shape (n_vertices, 3), Earth-centred, metres; rings one after the other, closed
+    node_first, node_last : ndarray of int, shape (n_nodes,), the node's first and last vertex
+    node_left, node_right : ndarray of int, shape (n_nodes,), children, -1 for a leaf (one piece)
+    node_ball_m : ndarray, shape (n_nodes, 4), centre and radius of the ball around the node's pieces
+    root : ndarray of int, shape (n_roots,), a node a ring and level
+    level_first_root : ndarray of int, shape (n_levels + 1,)
+    ball_m : ndarray, shape (4,), ball around the whole boundary
+    giant : bool, the zone may hold the antipode of a place near its own edges
+    """
+
+    vertices_m: FloatArray
+    node_first: IntArray
+    node_last: IntArray
+    node_left: IntArray
+    node_right: IntArray
+    node_ball_m: FloatArray
+    root: IntArray
+    level_first_root: IntArray
+    ball_m: FloatArray
+    giant: bool
+
+
+def zone_edges(shape: ZoneShape) -> ZoneEdges:
+    """Prepare a zone's boundary for the kernels.
+
+    Parameters
+    ----------
+    shape : ZoneShape
+
+    Returns
+    -------
+    ZoneEdges
+
+    Notes
+    -----
+    Level j holds the boundary to within 4^j · `EDGE_DEVIATION_FINEST_M`; levels stop where nothing changes.
+    Cuts lie on a lattice of longitudes or latitudes that no zone chooses, so that zones with a common edge
+    have the same pieces along it.
+    """
+    rings = [
+        np.asarray(ring.coords)[:, :2] for part in shape.polygon.geoms for ring in (part.exterior, *part.interiors)
+    ]
+    tree = _Tree()
+    for level in range(LEVELS):
+        pieces = [_pieces(ring, level, shape.edges == "geodesic") for ring in rings]
+        for piece in pieces:
+            tree.add_ring(earth_centred_m(piece[:, 0], piece[:, 1]))
+        tree.level_first_root.append(len(tree.roots))
+        if all(len(piece) == len(ring) for piece, ring in zip(pieces, rings, strict=True)):
+            break
+    return tree.finish()
+
+
+class _Tree:
+    """Builder of the arrays of `ZoneEdges`."""
+
+    def __init__(self) -> None:
+        self.vertices: list[FloatArray] = []
+        self.count = 0
+        self.spans: list[IntArray] = []
+        self.children: list[IntArray] = []
+        self.balls: list[FloatArray] = []
+        self.nodes = 0
+        self.roots: list[int] = []
+        self.level_first_root: list[int] = [0]
+
+    def add_ring(self, points_m: FloatArray) -> None:
+        spans, children = _halvings(len(points_m) - 1)
+        self.roots.append(self.nodes)
+        self.spans.append(spans + self.count)
+        self.children.append(np.where(children < 0, -1, children + self.nodes))
+        self.balls.append(_balls(points_m, spans, children))
+        self.vertices.append(points_m)
+        self.count += len(points_m)
+        self.nodes += len(spans)
+
+    def finish(self) -> ZoneEdges:
+        vertices, balls = np.concatenate(self.vertices), np.concatenate(self.balls)
+        spans, children = np.concatenate(self.spans), np.concatenate(self.children)
+        centre = 0.5 * (vertices.min(axis=0) + vertices.max(axis=0))
+        radius = float(np.sqrt(((vertices - centre) ** 2).sum(axis=1).max()))
+        return ZoneEdges(
+            vertices,
+            np.ascontiguousarray(spans[:, 0]),
+            np.ascontiguousarray(spans[:, 1]),
+            np.ascontiguousarray(children[:, 0]),
+            np.ascontiguousarray(children[:, 1]),
+            balls,
+            np.array(self.roots, dtype=np.int64),
+            np.array(self.level_first_root, dtype=np.int64),
+            np.array([*centre, radius]),
+            radius > _GIANT_RADIUS_M,
+        )
+
+
+def _halvings(pieces: int) -> tuple[IntArray, IntArray]:
+    """Spans and children of a balanced binary tree over consecutive pieces, parents before children."""
+    first, last = [np.array([0])], [np.array([pieces])]
+    left: list[IntArray] = []
+    right: list[IntArray] = []
+    known = 1
+    while True:
+        lo, hi = first[-1], last[-1]
+        splits = hi - lo > 1
+        order = np.cumsum(splits) - 1
+        left.append(np.where(splits, known + 2 * order, -1))
+        right.append(np.where(splits, known + 2 * order + 1, -1))
+        if not splits.any():
+            break
+        lo, hi = lo[splits], hi[splits]
+        middle = (lo + hi) // 2
+        first.append(np.stack([lo, middle], axis=1).ravel())
+        last.append(np.stack([middle, hi], axis=1).ravel())
+        known += len(first[-1])
+    spans = np.stack([np.concatenate(first), np.concatenate(last)], axis=1)
+    return spans.astype(np.int64), np.stack([np.concatenate(left), np.concatenate(right)], axis=1).astype(np.int64)
+
+
+def _balls(points_m: FloatArray, spans: IntArray, children: IntArray) -> FloatArray:
+    """Balls around the nodes, from the leaves up: a parent's ball holds its children's."""
+    balls = np.zeros((len(spans), 4))
+    leaf = children[:, 0] < 0
+    a, b = points_m[spans[leaf, 0]], points_m[spans[leaf, 1]]
+    balls[leaf, :3], balls[leaf, 3] = 0.5 * (a + b), 0.5 * np.linalg.norm(b - a, axis=1)
+    for level in reversed(_levels(children)):
+        nodes = level[children[level, 0] >= 0]
+        one, two = balls[children[nodes, 0]], balls[children[nodes, 1]]
+        gap = np.linalg.norm(two[:, :3] - one[:, :3], axis=1)
+        radius = np.maximum(np.maximum(one[:, 3], two[:, 3]), 0.5 * (gap + one[:, 3] + two[:, 3]))
+        share = np.where(gap > 0, (radius - one[:, 3]) / np.where(gap > 0, gap, 1.0), 0.0)
+        share = np.clip(share, 0.0, 1.0)[:, None]
+        balls[nodes, :3] = one[:, :3] + share * (two[:, :3] - one[:, :3])
+        reach = [np.linalg.norm(side[:, :3] - balls[nodes, :3], axis=1) + side[:, 3] for side in (one, two)]
+        balls[nodes, 3] = np.maximum(*reach)
+    return balls
+
+
+def _levels(children: IntArray) -> list[IntArray]:
+    levels = [np.array([0])]
+    while True:
+        below = children[levels[-1]]
+        below = below[below[:, 0] >= 0]
+        if not len(below):
+            return levels
+        levels.append(below.ravel())
+
+
+def _pieces(ring: FloatArray, level: int, geodesic: bool) -> FloatArray:
+    """Positions of a ring with cuts put in wherever a straight piece would leave the true edge."""
+    out = [ring[:1]]
+    for a, b in pairwise(ring):
+        cuts = _geodesic_cuts(a, b, level) if geodesic else _straight_cuts(a, b, level)
+        out += [cuts, b[None, :]]
+    return np.concatenate(out)
+
+
+def _longest_lon_rad(slope: float, lat_deg: float, level: int) -> float:
+    """Longest width of a piece, radians of longitude, that stays within the level's deviation of its edge.
+
+    The sagitta of an edge straight in longitude and latitude against the geodesic is at most
+    R/8 · Δλ · (Δλ |sin φ cos φ| + 2 |Δφ sin φ|).
+    """
+    # Rounded up in bands, so that a part of an edge is cut as the whole of it.
+    band = np.deg2rad(min(90.0, 15.0 * np.ceil(abs(lat_deg) / 15.0)))
+    bend = min(0.5, np.sin(band)) + 2.0 * slope * np.sin(band)
+    allowed_m = EDGE_DEVIATION_FINEST_M * 4.0**level
+    return float(np.sqrt(8.0 * allowed_m / (MEAN_RADIUS_M * max(bend, 1e-12))))
+
+
+def _straight_cuts(a: FloatArray, b: FloatArray, level: int) -> FloatArray:
+    low, high = (a, b) if tuple(a) <= tuple(b) else (b, a)
+    width, height = high - low
+    if (width == 0.0 and height == 0.0) or (abs(low[1]) == 90.0 and low[1] == high[1]):
+        return np.empty((0, 2))
+    lat_deg = max(abs(low[1]), abs(high[1]))
+    longest_deg = np.rad2deg(_LONGEST_PIECE_M * 2.0**level / MEAN_RADIUS_M)
+    along_lon = width >= abs(height)
+    if along_lon:
+        step = np.rad2deg(_longest_lon_rad(abs(height) / width, lat_deg, level))
+        step = min(step, longest_deg)
+    else:
+        step = longest_deg
+        if width > 0.0:
+            share = abs(height) / width
+            step = min(step, share * np.rad2deg(_longest_lon_rad(share, lat_deg, level)))
+    extent = width if along_lon else abs(height)
+    if extent <= step:
+        return np.empty((0, 2))
+    return _lattice_cuts(low, high, step, 0 if along_lon else 1, reverse=low is b)
+
+
+def _lattice_cuts(low: FloatArray, high: FloatArray, step_deg: float, axis: int, *, reverse: bool) -> FloatArray:
+    """Places on an edge where one coordinate is a multiple of the next power of two below a step."""
+    lattice = 2.0 ** np.floor(np.log2(step_deg))
+    start, end = sorted((low[axis], high[axis]))
+    lines = np.arange(np.floor(start / lattice) + 1, np.ceil(end / lattice)) * lattice
+    share = (lines - low[axis]) / (high[axis] - low[axis])
+    share = np.sort(share)
+    cuts = low + share[:, None] * (high - low)
+    return cuts[::-1] if reverse else cuts
+
+
+def _geodesic_cuts(a: FloatArray, b: FloatArray, level: int) -> FloatArray:
+    low, high = (a, b) if tuple(a) <= tuple(b) else (b, a)
+    azimuth_deg, _, length_m = WGS84.inv(low[0], low[1], high[0], high[1])
+    count = int(np.ceil(length_m / (_LONGEST_PIECE_M * 2.0**level)))
+    if count < 2:
+        return np.empty((0, 2))
+    lengths = length_m * np.arange(1, count) / count
+    lon, lat, _ = WGS84.fwd(
+        np.full(count - 1, low[0]), np.full(count - 1, low[1]), np.full(count - 1, azimuth_deg), lengths
+    )
+    # Longitudes run on across ±180°, as the ring's own do.
+    lon = low[0] + np.mod(np.asarray(lon) - low[0] + 180.0, 360.0) - 180.0
+    cuts = np.column_stack([lon, lat])
+    return cuts[::-1] if low is b else cuts

@@ -1,0 +1,306 @@
+"""Monthly use of zones by one animal: the one call that brings the estimators together."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+from typing import Any, Literal
+
+import numpy as np
+from numpy.typing import NDArray
+
+from estimators.brownian_bridge import BrownianBridge
+from estimators.defaults import (
+    DEFAULT_LONGEST_BRIDGED_GAP_HOURS,
+    DEFAULT_MINIMUM_STAY_HOURS,
+    WIDE_SPREAD_SD_M,
+)
+from estimators.gaussian_path import CoveredSteps, GaussianPath, covered_steps, path_between_fixes
+from estimators.months import MonthSpan, Span, intersect_spans, length_ms, month_spans
+from estimators.movement_variance import VariancePosterior, variance_posterior
+from estimators.random_walk import RandomWalk
+from estimators.residence import inside_stretches, visits_per_period
+from estimators.track import Track
+from estimators.zone import Zone
+from estimators.zone_edges import zone_edges
+from estimators.zone_mass import Cells, antipode_inside, integrated_zone_mass
+
+FloatArray = NDArray[np.float64]
+EstimatorName = Literal["random_walk", "brownian_bridge"]
+_MODELS = {model.name: model for model in (RandomWalk, BrownianBridge)}
+_HOUR_MS = 3_600_000.0
+
+
+@dataclass(frozen=True)
+class ZoneUseOptions:
+    """How zone use is computed.
+
+    Attributes
+    ----------
+    time_zone : str, IANA name of the reporting time zone
+    estimator : {"random_walk", "brownian_bridge"}
+    longest_bridged_gap_hours, minimum_stay_hours : float
+    """
+
+    time_zone: str = "UTC"
+    estimator: EstimatorName = "random_walk"
+    longest_bridged_gap_hours: float = DEFAULT_LONGEST_BRIDGED_GAP_HOURS
+    minimum_stay_hours: float = DEFAULT_MINIMUM_STAY_HOURS
+
+
+@dataclass(frozen=True)
+class MonthFacts:
+    """What is known of an animal in a month, whatever the zone.
+
+    Attributes
+    ----------
+    month : str, ``"2026-03"``
+    fixes : int, fixes within the tracked time
+    tracked_hours, covered_hours, longest_gap_hours : float
+    flags : tuple of str: assumed_error, zero_position, wide_spread, variance_from_prior
+    """
+
+    month: str
+    fixes: int
+    tracked_hours: float
+    covered_hours: float
+    longest_gap_hours: float
+    flags: tuple[str, ...]
+
+
+@dataclass(frozen=True)
+class ZoneMonth:
+    """Use of one zone in one month.
+
+    Attributes
+    ----------
+    zone_index : int, place of the zone in the list given
+    month : str
+    fixes : int
+    in_force_hours : float, tracked time that the zone was in force
+    tracked_hours, covered_hours, longest_gap_hours : float, of the time in force
+    probability_mass, numerical_error, time_fraction : float or None, None without covered time
+    inside_hours : float, along the straight path
+    visits : int
+    """
+
+    zone_index: int
+    month: str
+    fixes: int
+    in_force_hours: float
+    tracked_hours: float
+    covered_hours: float
+    longest_gap_hours: float
+    probability_mass: float | None
+    numerical_error: float | None
+    time_fraction: float | None
+    inside_hours: float
+    visits: int
+
+
+@dataclass(frozen=True)
+class AnimalZoneUse:
+    """Monthly zone use of one animal.
+
+    Attributes
+    ----------
+    estimator : str
+    parameters : dict, the fit; give it back to skip fitting the same track
+    months : tuple of MonthFacts
+    rows : tuple of ZoneMonth
+        Only what is not trivially zero: left out are months that the zone was in force throughout, without an
+        edge in reach and outside.
+    """
+
+    estimator: str
+    parameters: dict[str, Any]
+    months: tuple[MonthFacts, ...]
+    rows: tuple[ZoneMonth, ...]
+
+
+@dataclass(frozen=True)
+class _Animal:
+    """What all zones of one animal share."""
+
+    track: Track
+    steps: CoveredSteps
+    paths: tuple[GaussianPath, ...]
+    months: list[MonthSpan]
+    tracked: list[list[Span]]
+    options: ZoneUseOptions
+
+
+def estimate_zone_use(
+    track: Track,
+    tracked: Sequence[Span],
+    zones: Sequence[Zone],
+    options: ZoneUseOptions,
+    parameters: Mapping[str, Any] | None = None,
+) -> AnimalZoneUse:
+    """Monthly use of zones by one animal.
+
+    Parameters
+    ----------
+    track : Track
+    tracked : sequence of (start_ms, end_ms), half-open, sorted, disjoint: deployments less post-release windows
+    zones : sequence of Zone
+    options : ZoneUseOptions
+    parameters : mapping, optional, the fit of this same track from an earlier call
+
+    Returns
+    -------
+    AnimalZoneUse
+    """
+    gap_ms = options.longest_bridged_gap_hours * _HOUR_MS
+    model = _MODELS[options.estimator](track, gap_ms)
+    steps = covered_steps(track, gap_ms)
+    fit = _restored(parameters) if parameters else variance_posterior(model.log_likelihood)
+    paths = tuple(
+        path_between_fixes(track, steps, model.marginals(variance), variance, weight)
+        for variance, weight in zip(fit.variance_m2_per_s, fit.weight, strict=True)
+    )
+    months = month_spans(tracked[0][0], tracked[-1][1], options.time_zone) if tracked else []
+    spans = [intersect_spans([(m.start_ms, m.end_ms)], list(tracked)) for m in months]
+    kept = [k for k, span in enumerate(spans) if span]
+    animal = _Animal(track, steps, paths, [months[k] for k in kept], [spans[k] for k in kept], options)
+    rows = [row for index, zone in enumerate(zones) for row in _zone_rows(animal, index, zone)]
+    return AnimalZoneUse(options.estimator, _stored(fit), tuple(_month_facts(animal, fit)), tuple(rows))
+
+
+def _stored(fit: VariancePosterior) -> dict[str, Any]:
+    return {
+        "movement_variance_m2_per_s": list(fit.variance_m2_per_s),
+        "weight": list(fit.weight),
+        "median_m2_per_s": fit.median_m2_per_s,
+        "log_sd": fit.log_sd,
+        "prior": "log-normal",
+    }
+
+
+def _restored(parameters: Mapping[str, Any]) -> VariancePosterior:
+    return VariancePosterior(
+        tuple(parameters["movement_variance_m2_per_s"]),
+        tuple(parameters["weight"]),
+        parameters["median_m2_per_s"],
+        parameters["log_sd"],
+    )
+
+
+def _cells(steps: CoveredSteps, spans: Sequence[Sequence[Span]]) -> Cells:
+    """Covered time cut at the spans of each period, in time order."""
+    columns: list[tuple[NDArray[Any], ...]] = []
+    for period, of_period in enumerate(spans):
+        for start_ms, end_ms in of_period:
+            first = int(np.searchsorted(steps.end_ms, start_ms, side="right"))
+            last = int(np.searchsorted(steps.start_ms, end_ms, side="left"))
+            part = np.arange(first, last)
+            begin, length = steps.start_ms[part], steps.end_ms[part] - steps.start_ms[part]
+            low = np.clip((start_ms - begin) / length, 0.0, 1.0)
+            high = np.clip((end_ms - begin) / length, 0.0, 1.0)
+            columns.append((part, np.full(len(part), period), low, high, (high - low) * length))
+    if not columns:
+        columns = [tuple(np.empty(0) for _ in range(5))]
+    part, of, low, high, duration = (np.concatenate([column[k] for column in columns]) for k in range(5))
+    return Cells(part.astype(np.int64), of.astype(np.int64), low, high, duration)
+
+
+def _fix_counts(track: Track, spans: Sequence[Span]) -> tuple[int, float, NDArray[np.bool_]]:
+    """Fixes in spans, the longest time without one, and which fixes they are."""
+    inside = np.zeros(len(track), dtype=bool)
+    longest_ms = 0.0
+    for start_ms, end_ms in spans:
+        # The last fix of all ends the tracked time; it counts although spans are half-open.
+        here = (track.time_ms >= start_ms) & (
+            (track.time_ms < end_ms) | ((track.time_ms == end_ms) & (end_ms == track.time_ms[-1]))
+        )
+        inside |= here
+        marks = np.concatenate([[start_ms], track.time_ms[here], [end_ms]])
+        longest_ms = max(longest_ms, float(np.diff(marks).max()))
+    return int(inside.sum()), longest_ms, inside
+
+
+def _hours(milliseconds: float) -> float:
+    return round(float(milliseconds) / _HOUR_MS, 6)
+
+
+def _month_facts(animal: _Animal, fit: VariancePosterior) -> list[MonthFacts]:
+    cells = _cells(animal.steps, animal.tracked)
+    covered = np.bincount(cells.period, weights=cells.duration_ms, minlength=len(animal.months))
+    widest = np.zeros(len(animal.months))
+    for path in animal.paths:
+        np.maximum.at(widest, cells.period, path.largest_sd_m()[cells.part])
+    facts = []
+    for k, month in enumerate(animal.months):
+        fixes, longest_ms, inside = _fix_counts(animal.track, animal.tracked[k])
+        flags = {
+            "assumed_error": bool(np.any(animal.track.assumed_error[inside])),
+            "zero_position": bool(np.any(animal.track.zero_position[inside])),
+            "wide_spread": bool(widest[k] > WIDE_SPREAD_SD_M),
+            "variance_from_prior": fit.log_sd > 3.0,
+        }
+        facts.append(
+            MonthFacts(
+                month.month,
+                fixes,
+                _hours(length_ms(animal.tracked[k])),
+                _hours(covered[k]),
+                _hours(longest_ms),
+                tuple(sorted(name for name, on in flags.items() if on)),
+            )
+        )
+    return facts
+
+
+def _zone_rows(animal: _Animal, index: int, zone: Zone) -> list[ZoneMonth]:
+    if not animal.months:
+        return []
+    in_force = zone.in_force_spans(animal.months[0].start_ms, animal.months[-1].end_ms, animal.options.time_zone)
+    spans = [intersect_spans(tracked, in_force) for tracked in animal.tracked]
+    cells = _cells(animal.steps, spans)
+    covered = np.bincount(cells.period, weights=cells.duration_ms, minlength=len(spans))
+    edges = zone_edges(zone.shape)
+    sums = np.zeros((len(spans), 3))
+    for path in animal.paths:
+        part = integrated_zone_mass(path, zone.shape, edges, cells, len(spans))
+        sums[:, :2] += path.weight * part[:, :2]
+        sums[:, 2] = np.maximum(sums[:, 2], part[:, 2])
+    turned = antipode_inside(zone.shape, edges, animal.paths[0])
+    period, start_ms, end_ms = inside_stretches(animal.steps, edges, turned, cells)
+    inside = np.bincount(period, weights=end_ms - start_ms, minlength=len(spans))
+    visits = visits_per_period(period, start_ms, end_ms, len(spans), animal.options.minimum_stay_hours * _HOUR_MS)
+    rows = []
+    for k, span in enumerate(spans):
+        trivial = span == animal.tracked[k] and sums[k, 2] == 0.0 and sums[k, 0] == 0.0 and inside[k] == 0.0
+        if span and not trivial:
+            figures = (covered[k], sums[k], inside[k], int(visits[k]))
+            rows.append(_row(animal, index, k, span, *figures))
+    return rows
+
+
+def _row(
+    animal: _Animal,
+    index: int,
+    month: int,
+    span: list[Span],
+    covered_ms: float,
+    sums: FloatArray,
+    inside_ms: float,
+    visits: int,
+) -> ZoneMonth:
+    fixes, longest_ms, _ = _fix_counts(animal.track, span)
+    known = covered_ms > 0.0
+    return ZoneMonth(
+        index,
+        animal.months[month].month,
+        fixes,
+        _hours(length_ms(span)),
+        _hours(length_ms(span)),
+        _hours(covered_ms),
+        _hours(longest_ms),
+        round(min(1.0, max(0.0, float(sums[0] / covered_ms))), 9) if known else None,
+        # Upwards, and with the rounding of the mass itself.
+        float(np.ceil((sums[1] / covered_ms + 5e-10) * 1e12) / 1e12) if known else None,
+        round(min(1.0, float(inside_ms / covered_ms)), 9) if known else None,
+        _hours(min(inside_ms, covered_ms)),
+        visits,
+    )

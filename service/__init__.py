@@ -1,0 +1,1 @@
+"""HTTP service around the estimators: readers, store, recompute, writers, routes and the command line."""
