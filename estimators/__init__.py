@@ -28,7 +28,8 @@ from estimators.months import MonthSpan, Season, local_date_ms, month_spans, rep
 from estimators.polygon_mass import gaussian_mass_in_polygon
 from estimators.track import Track
 from estimators.zone import Zone, ZoneShape
-from estimators.zone_use import AnimalZoneUse, MonthFacts, ZoneMonth, ZoneUseOptions, estimate_zone_use
+from estimators.zone_month import MonthFacts, ZoneMonth
+from estimators.zone_use import AnimalZoneUse, ZoneUseOptions, estimate_zone_use
 
 __all__ = [
     "ARGOS_RADIUS68_M",

@@ -148,7 +148,7 @@ def step_parts(lon_deg: FloatArray, lat_deg: FloatArray, steps: NDArray[np.int64
     return StepParts(steps[of], shares[0], shares[2], origin_lon, origin_lat, origin_m, axes, start_m, end_m)
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
 def plane_point_m(
     x: float, y: float, z: float, origin_m: Any, axes: Any
 ) -> tuple[float, float]:  # pragma: no cover - compiled
@@ -171,7 +171,7 @@ def plane_point_m(
     return east * scale, north * scale
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
 def _plane_points_m(points_m: Any, origin_m: Any, axes: Any) -> Any:  # pragma: no cover - compiled
     found = np.empty((points_m.shape[0], 2))
     for k in range(points_m.shape[0]):

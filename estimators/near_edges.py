@@ -5,24 +5,22 @@ from __future__ import annotations
 import math
 from typing import Any
 
-import numpy as np
 from numba import njit
 
 from estimators.frames import plane_point_m
+from estimators.polygon_mass import upward_edge
 
 
-@njit(cache=True)
-def place_in_space_m(x: float, y: float, origin_m: Any, axes: Any) -> Any:  # pragma: no cover - compiled
-    """Earth-centred place of a point of a local plane, to within its distance to the fourth power over R³."""
+@njit(cache=True, error_model="numpy")
+def place_in_space_m(x: float, y: float, origin_m: Any, axes: Any, place: Any) -> None:  # pragma: no cover - compiled
+    """Fill in the Earth-centred place of a point of a local plane; errs by its distance to the fourth power over R³."""
     radius = math.sqrt(origin_m[0] ** 2 + origin_m[1] ** 2 + origin_m[2] ** 2)
     drop = (x * x + y * y) / (2.0 * radius * radius)
-    place = np.empty(3)
     for k in range(3):
         place[k] = origin_m[k] * (1.0 - drop) + axes[0, k] * x + axes[1, k] * y
-    return place
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
 def _shut_out(ball: Any, place: Any, reach: float, origin_m: Any) -> bool:  # pragma: no cover - compiled
     """Whether a ball keeps clear both of a place's surroundings and of the plane's antipode."""
     near = (ball[0] - place[0]) ** 2 + (ball[1] - place[1]) ** 2 + (ball[2] - place[2]) ** 2
@@ -33,9 +31,16 @@ def _shut_out(ball: Any, place: Any, reach: float, origin_m: Any) -> bool:  # pr
     return bool(far > (ball[3] + 1000.0) ** 2)
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
 def collect_edges(
-    edges: Any, level: int, place: Any, reach: float, origin_m: Any, axes: Any, out: Any, stack: Any
+    edges: Any,
+    level: int,
+    place: Any,
+    reach: float,
+    origin_m: Any,
+    axes: Any,
+    out: Any,
+    stack: Any,
 ) -> tuple[int, int]:  # pragma: no cover - compiled
     """Edges around a place, in the plane frame of an origin.
 
@@ -45,14 +50,14 @@ def collect_edges(
     level : int, level of detail
     place : ndarray, shape (3,), Earth-centred, metres
     reach : float, metres
-    out : ndarray, shape (m, 5), gains x1, y1, x2, y2, and 1 for a near piece or 0 for a stand-in
+    out : ndarray, shape (m, 5), gains near pieces from the front and far stand-ins from the back (`upward_edge`)
     stack : ndarray of int, working space
 
     Returns
     -------
-    tuple of int : rows filled, near pieces among them
+    tuple of int : near pieces, far stand-ins
     """
-    count, near = 0, 0
+    near, far_ones = 0, 0
     margin = reach * 1.001 + 1.0
     last_vertex, last_x, last_y = -1, 0.0, 0.0
     for r in range(edges.level_first_root[level], edges.level_first_root[level + 1]):
@@ -73,9 +78,11 @@ def collect_edges(
                 last_x, last_y = plane_point_m(v[0], v[1], v[2], origin_m, axes)
             v = edges.vertices_m[b]
             x, y = plane_point_m(v[0], v[1], v[2], origin_m, axes)
-            out[count, 0], out[count, 1], out[count, 2], out[count, 3] = last_x, last_y, x, y
-            out[count, 4] = 0.0 if far else 1.0
-            count += 1
-            near += 0 if far else 1
+            if far:
+                far_ones += 1
+                upward_edge(out, len(out) - far_ones, last_x, last_y, x, y)
+            else:
+                upward_edge(out, near, last_x, last_y, x, y)
+                near += 1
             last_vertex, last_x, last_y = b, x, y
-    return count, near
+    return near, far_ones

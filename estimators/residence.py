@@ -14,19 +14,19 @@ from numpy.typing import NDArray
 
 from estimators.gaussian_path import CoveredSteps
 from estimators.near_edges import collect_edges, place_in_space_m
-from estimators.polygon_mass import winding_step
+from estimators.polygon_mass import winding_number
 from estimators.zone_edges import ZoneEdges
 from estimators.zone_mass import Cells
 
 FloatArray = NDArray[np.float64]
 
 
-@njit(cache=True)
-def _crossings(out: Any, count: int, start: Any, end: Any, lo: float, hi: float, found: Any) -> int:  # pragma: no cover
+@njit(cache=True, error_model="numpy")
+def _crossings(out: Any, near: int, start: Any, end: Any, lo: float, hi: float, found: Any) -> int:  # pragma: no cover
     """Shares at which the straight way crosses edges, sorted, between lo and hi."""
     dx, dy = end[0] - start[0], end[1] - start[1]
     n = 0
-    for k in range(count):
+    for k in range(near):
         ex, ey = out[k, 2] - out[k, 0], out[k, 3] - out[k, 1]
         denominator = dx * ey - dy * ex
         if denominator == 0.0:
@@ -42,7 +42,7 @@ def _crossings(out: Any, count: int, start: Any, end: Any, lo: float, hi: float,
     return n
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
 def _inside_stretches(
     edges: Any, turned: Any, origins: Any, axes: Any, starts: Any, ends: Any, cells: Any
 ) -> Any:  # pragma: no cover - compiled
@@ -51,7 +51,7 @@ def _inside_stretches(
     room = len(edges.vertices_m) + 64 * len(edges.root) + 64
     out, stack, found = np.empty((room, 5)), np.empty(256, np.int64), np.empty(room + 2)
     rows = np.empty((256, 3))
-    n, ball = 0, edges.ball_m
+    n, ball, place = 0, edges.ball_m, np.empty(3)
     for c in range(len(part)):
         k = part[c]
         dx, dy = ends[k, 0] - starts[k, 0], ends[k, 1] - starts[k, 1]
@@ -61,9 +61,9 @@ def _inside_stretches(
         if gap2 > (ball[3] + 1.001 * reach + 1.0) ** 2 and not edges.giant:
             continue
         mx, my = starts[k, 0] + 0.5 * dx, starts[k, 1] + 0.5 * dy
-        place = place_in_space_m(mx, my, origins[k], axes[k])
-        count, _ = collect_edges(edges, 0, place, reach, origins[k], axes[k], out, stack)
-        m = _crossings(out, count, starts[k], ends[k], lows[c], highs[c], found)
+        place_in_space_m(mx, my, origins[k], axes[k], place)
+        near, far = collect_edges(edges, 0, place, reach, origins[k], axes[k], out, stack)
+        m = _crossings(out, near, starts[k], ends[k], lows[c], highs[c], found)
         found[m] = highs[c]
         lo = lows[c]
         for j in range(m + 1):
@@ -72,9 +72,8 @@ def _inside_stretches(
                 continue
             share = 0.5 * (lo + hi)
             px, py = starts[k, 0] + share * dx, starts[k, 1] + share * dy
-            winding = offset
-            for e in range(count):
-                winding += winding_step(out[e, 0] - px, out[e, 1] - py, out[e, 2] - px, out[e, 3] - py)
+            winding = offset + winding_number(out, 0, near, px, py)
+            winding += winding_number(out, len(out) - far, len(out), px, py)
             if winding > 0:
                 if n > 0 and rows[n - 1, 0] == c and rows[n - 1, 2] == lo:
                     rows[n - 1, 2] = hi

@@ -26,18 +26,20 @@ from estimators.defaults import (
 )
 from estimators.gaussian_path import GaussianPath
 from estimators.near_edges import collect_edges, place_in_space_m
-from estimators.polygon_mass import NUDGE_SD, edge_loss, is_left, winding_step
+from estimators.polygon_mass import EDGE_ERROR, mass_of_edges, winding_number
 from estimators.zone import ZoneShape
 from estimators.zone_edges import ZoneEdges
 
 FloatArray = NDArray[np.float64]
 
 _DEEPEST: Final = 60
-_X, _W = np.zeros((3, 16)), np.zeros((3, 16))
-_COUNTS: Final = np.array([4, 8, 16])
+_COUNTS: Final = np.array([4, 5, 6, 7, 8, 9, 10, 12])
+_X, _W = np.zeros((len(_COUNTS), 12)), np.zeros((len(_COUNTS), 12))
 for _row, _count in enumerate(_COUNTS):
     _X[_row, :_count], _W[_row, :_count] = np.polynomial.legendre.leggauss(_count)
-_RHOS: Final = np.array([1.6, 2.0, 2.6, 3.4, 4.5, 6.5, 10.0, 20.0])
+_RHOS: Final = np.array([1.5, 1.8, 2.2, 2.6, 3.2, 4.0, 5.0, 6.5, 9.0, 13.0, 20.0])
+# (64/15)/2 ρ^(-2(n-1))/(1 - ρ⁻²): the bound without M, per unit of a panel's length.
+_DECAY: Final = np.array([[(64 / 30) * r ** (-2.0 * (n - 1)) / (1.0 - r**-2.0) for n in _COUNTS] for r in _RHOS])
 
 
 @dataclass(frozen=True)
@@ -58,17 +60,17 @@ class Cells:
     duration_ms: FloatArray
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
 def _largest_eigenvalue(xx: float, xy: float, yy: float) -> float:  # pragma: no cover - compiled
-    return 0.5 * (xx + yy) + math.hypot(0.5 * (xx - yy), xy)
+    return 0.5 * (xx + yy) + math.sqrt(0.25 * (xx - yy) * (xx - yy) + xy * xy)
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
 def _at(p: Any, share: float, k: int) -> float:  # pragma: no cover - compiled
     return float(p[0, k] + share * (p[1, k] + share * p[2, k]))
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
 def _panel_sds(p: Any, lo: float, hi: float) -> tuple[float, float]:  # pragma: no cover - compiled
     """Upper bound of the standard deviation over a panel, and its least value at the panel's ends and middle."""
     top, low = 0.0, 1e300
@@ -80,45 +82,51 @@ def _panel_sds(p: Any, lo: float, hi: float) -> tuple[float, float]:  # pragma: 
         if k != 1:
             top = max(top, large)
     # The middle Bernstein coefficient: value at the start and half the slope over the panel.
-    slope = [0.5 * (hi - lo) * (p[1, k] + 2.0 * lo * p[2, k]) for k in range(3)]
-    top = max(top, _largest_eigenvalue(_at(p, lo, 0) + slope[0], _at(p, lo, 1) + slope[1], _at(p, lo, 2) + slope[2]))
+    half = 0.5 * (hi - lo)
+    xx = _at(p, lo, 0) + half * (p[1, 0] + 2.0 * lo * p[2, 0])
+    xy = _at(p, lo, 1) + half * (p[1, 1] + 2.0 * lo * p[2, 1])
+    yy = _at(p, lo, 2) + half * (p[1, 2] + 2.0 * lo * p[2, 2])
+    top = max(top, _largest_eigenvalue(xx, xy, yy))
     return math.sqrt(top), math.sqrt(max(low, 0.0))
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
 def _whitened(p: Any, middle: float, half: float, dx: float, dy: float, q: Any) -> float:  # pragma: no cover
     """Covariance polynomial in z, share = middle + half z, whitened at z = 0; returns the whitened mean's speed."""
-    v0 = [_at(p, middle, k) for k in range(3)]
-    a = math.sqrt(v0[0])
-    b = v0[1] / a
-    c = math.sqrt(max(v0[2] - b * b, 1e-300))
+    a = math.sqrt(_at(p, middle, 0))
+    b = _at(p, middle, 1) / a
+    c = math.sqrt(max(_at(p, middle, 2) - b * b, 1e-300))
     for order in range(1, 3):
-        xx, xy, yy = [
-            half * (p[1, k] + 2.0 * middle * p[2, k]) if order == 1 else half * half * p[2, k] for k in range(3)
-        ]
-        wxx = xx / (a * a)
-        wxy = (xy - b * xx / a) / (a * c)
-        q[order, 0], q[order, 1] = wxx, wxy
+        if order == 1:
+            xx = half * (p[1, 0] + 2.0 * middle * p[2, 0])
+            xy = half * (p[1, 1] + 2.0 * middle * p[2, 1])
+            yy = half * (p[1, 2] + 2.0 * middle * p[2, 2])
+        else:
+            xx, xy, yy = half * half * p[2, 0], half * half * p[2, 1], half * half * p[2, 2]
+        q[order, 0], q[order, 1] = xx / (a * a), (xy - b * xx / a) / (a * c)
         q[order, 2] = (yy - 2.0 * b * xy / a + b * b * xx / (a * a)) / (c * c)
     ux = dx * half / a
     uy = (dy * half - b * ux) / c
     return math.hypot(ux, uy)
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
 def _norm(xx: float, xy: float, yy: float) -> float:  # pragma: no cover - compiled
-    return abs(0.5 * (xx + yy)) + math.hypot(0.5 * (xx - yy), xy)
+    return abs(0.5 * (xx + yy)) + math.sqrt(0.25 * (xx - yy) * (xx - yy) + xy * xy)
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
 def _rule_for_panel(
     p: Any, lo: float, hi: float, dx: float, dy: float, q: Any, limit: float
-) -> Any:  # pragma: no cover
+) -> tuple[int, float]:  # pragma: no cover
     """Smallest Gauss rule whose bound is below the limit (an index, or -1), and that bound per unit of length."""
     half = 0.5 * (hi - lo)
     speed = _whitened(p, lo + half, half, dx, dy, q)
-    best = np.full(3, 1e300)
-    for rho in _RHOS:
+    convex = max(0.0, _largest_eigenvalue(q[2, 0], q[2, 1], q[2, 2]))
+    bend, slope = _norm(q[2, 0], q[2, 1], q[2, 2]), _norm(q[1, 0], q[1, 1], q[1, 2])
+    rule, bound = len(_COUNTS), 1.0
+    for row in range(len(_RHOS)):
+        rho = _RHOS[row]
         width, height = 0.5 * (rho + 1.0 / rho), 0.5 * (rho - 1.0 / rho)
         # Least eigenvalue of the real part over the rectangle |Re z| ≤ width, |Im z| ≤ height.
         ends = 1e300
@@ -127,57 +135,30 @@ def _rule_for_panel(
             xy = sign * width * q[1, 1] + width * width * q[2, 1]
             yy = 1.0 + sign * width * q[1, 2] + width * width * q[2, 2]
             ends = min(ends, xx + yy - _largest_eigenvalue(xx, xy, yy))
-        convex = max(0.0, _largest_eigenvalue(q[2, 0], q[2, 1], q[2, 2]))
         least = ends - convex * (width * width + height * height)
         if least <= 1e-3:
             break
-        turn = height * (_norm(q[1, 0], q[1, 1], q[1, 2]) + 2.0 * width * _norm(q[2, 0], q[2, 1], q[2, 2]))
+        turn = height * (slope + 2.0 * width * bend)
         power = 0.5 * (speed * height) ** 2 / least
         if power > 600.0:
             break
-        bound = math.sqrt(1.0 + (turn / least) ** 2) * math.exp(power) * (64.0 / 30.0) / (1.0 - rho**-2.0)
-        for k in range(3):
-            best[k] = min(best[k], bound * rho ** (-2.0 * (_COUNTS[k] - 1)))
-    for k in range(3):
-        if best[k] <= limit:
-            return k, best[k]
-    return -1, 1.0
+        growth = math.sqrt(1.0 + (turn / least) ** 2) * math.exp(power)
+        for k in range(min(rule + 1, len(_COUNTS))):
+            reached = growth * _DECAY[row, k]
+            if reached <= limit and (k < rule or reached < bound):
+                rule, bound = k, reached
+                break
+    return (rule, bound) if rule < len(_COUNTS) else (-1, 1.0)
 
 
-@njit(cache=True)
-def _mass_at(out: Any, count: int, mx: float, my: float, xx: float, xy: float, yy: float) -> float:  # pragma: no cover
-    """Mass at one moment, from the collected edges."""
-    a = math.sqrt(xx)
-    b = xy / a
-    c = math.sqrt(max(yy - b * b, 1e-300))
-    mx += NUDGE_SD * a
-    my += 0.7 * NUDGE_SD * c
-    winding, loss = 0, 0.0
-    for k in range(count):
-        x1, y1, x2, y2 = out[k, 0] - mx, out[k, 1] - my, out[k, 2] - mx, out[k, 3] - my
-        winding += winding_step(x1, y1, x2, y2)
-        if out[k, 4] == 1.0:
-            u1, u2 = x1 / a, x2 / a
-            loss += edge_loss(u1, (y1 - b * u1) / c, u2, (y2 - b * u2) / c, is_left(x1, y1, x2, y2))
-    return winding - loss / (2.0 * math.pi)
-
-
-@njit(cache=True)
-def _winding_at(out: Any, count: int, mx: float, my: float) -> int:  # pragma: no cover - compiled
-    winding = 0
-    for k in range(count):
-        winding += winding_step(out[k, 0] - mx, out[k, 1] - my, out[k, 2] - mx, out[k, 3] - my)
-    return winding
-
-
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
 def _cell_mass(
     edges: Any, origin: Any, axes: Any, start: Any, end: Any, p: Any, lo0: float, hi0: float, work: Any
-) -> tuple[float, float, bool]:  # pragma: no cover - compiled
-    """Integral of the mass over the shares [lo0, hi0] of a part, its error bound, and whether an edge was near."""
-    out, stack, panels, q = work
+) -> tuple[float, float, int]:  # pragma: no cover - compiled
+    """Integral of the mass over the shares [lo0, hi0] of a part, its error bound, and pairs of node and near edge."""
+    out, stack, panels, q, place = work
     panels[0, 0], panels[0, 1], panels[0, 2] = lo0, hi0, 0.0
-    depth, total, error, touched = 1, 0.0, 0.0, False
+    depth, total, error, pairs = 1, 0.0, 0.0, 0
     dx, dy = end[0] - start[0], end[1] - start[1]
     top_level = len(edges.level_first_root) - 2
     while depth > 0:
@@ -188,26 +169,33 @@ def _cell_mass(
         mx, my = start[0] + middle * dx, start[1] + middle * dy
         reach = EDGE_REACH_SD * largest
         run = half * math.hypot(dx, dy)
-        detail = math.log(max(EDGE_DEVIATION_SD_SHARE * least / EDGE_DEVIATION_FINEST_M, 1.0)) / math.log(4.0)
-        level = min(top_level, int(detail))
-        place = place_in_space_m(mx, my, origin, axes)
-        count, near = collect_edges(edges, level, place, reach + run, origin, axes, out, stack)
-        if near == 0:
-            total += 2.0 * half * _winding_at(out, count, mx, my)
-            continue
-        touched = True
-        rule, bound = _rule_for_panel(p, lo, hi, dx, dy, q, INTEGRATION_LIMIT)
+        level, coarsest_m, allowed_m = 0, EDGE_DEVIATION_FINEST_M, EDGE_DEVIATION_SD_SHARE * least
+        while level < top_level and 4.0 * coarsest_m <= allowed_m:
+            level, coarsest_m = level + 1, 4.0 * coarsest_m
+        rule, bound = -1, 1.0
+        if halvings > 0.0:
+            rule, bound = _rule_for_panel(p, lo, hi, dx, dy, q, INTEGRATION_LIMIT)
+        if rule >= 0 or halvings % 2.0 == 0.0:
+            place_in_space_m(mx, my, origin, axes, place)
+            near, far = collect_edges(edges, level, place, reach + run, origin, axes, out, stack)
+            if near == 0:
+                total += 2.0 * half * winding_number(out, len(out) - far, len(out), mx, my)
+                continue
+        if halvings == 0.0:
+            rule, bound = _rule_for_panel(p, lo, hi, dx, dy, q, INTEGRATION_LIMIT)
         if rule < 0 and halvings < _DEEPEST:
             panels[depth, 0], panels[depth, 1], panels[depth, 2] = middle, hi, halvings + 1.0
             panels[depth + 1, 0], panels[depth + 1, 1], panels[depth + 1, 2] = lo, middle, halvings + 1.0
             depth += 2
             continue
-        error += 2.0 * half * bound
+        error += 2.0 * half * (bound + near * EDGE_ERROR)
+        pairs += near * _COUNTS[max(rule, 0)]
         for k in range(_COUNTS[max(rule, 0)]):
             share = middle + half * _X[max(rule, 0), k]
-            mass = _mass_at(
+            mass = mass_of_edges(
                 out,
-                count,
+                near,
+                far,
                 start[0] + share * dx,
                 start[1] + share * dy,
                 _at(p, share, 0),
@@ -215,10 +203,10 @@ def _cell_mass(
                 _at(p, share, 2),
             )
             total += half * _W[max(rule, 0), k] * mass
-    return total, error, touched
+    return total, error, pairs
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
 def _integrate(
     edges: Any,
     turned: Any,
@@ -233,7 +221,7 @@ def _integrate(
 ) -> None:  # pragma: no cover - compiled
     part, period, lows, highs, durations = cells
     room = len(edges.vertices_m) + 64 * len(edges.root) + 64
-    work = (np.empty((room, 5)), np.empty(256, np.int64), np.empty((130, 3)), np.zeros((3, 3)))
+    work = (np.empty((room, 5)), np.empty(256, np.int64), np.empty((130, 3)), np.zeros((3, 3)), np.empty(3))
     ball = edges.ball_m
     for c in range(len(part)):
         k = part[c]
@@ -241,7 +229,7 @@ def _integrate(
         gap2 = (ball[0] - origins[k, 0]) ** 2 + (ball[1] - origins[k, 1]) ** 2 + (ball[2] - origins[k, 2]) ** 2
         if gap2 > (ball[3] + reaches[k]) ** 2 and not edges.giant:
             continue
-        total, error, touched = _cell_mass(
+        total, error, pairs = _cell_mass(
             edges, origins[k], axes[k], starts[k], ends[k], covariances[k], lows[c], highs[c], work
         )
         width = highs[c] - lows[c]
@@ -249,8 +237,7 @@ def _integrate(
             continue
         sums[period[c], 0] += durations[c] * (outside + total / width)
         sums[period[c], 1] += durations[c] * error / width
-        if touched:
-            sums[period[c], 2] = 1.0
+        sums[period[c], 2] += pairs
 
 
 def antipode_inside(shape: ZoneShape, edges: ZoneEdges, path: GaussianPath) -> NDArray[np.int64]:
@@ -279,7 +266,8 @@ def integrated_zone_mass(
 
     Returns
     -------
-    ndarray, shape (n_periods, 3): milliseconds expected inside; bound of their error; 1 where an edge was in reach
+    ndarray, shape (n_periods, 3): milliseconds expected inside; bound of their error; pairs of node and edge
+        in reach
 
     Notes
     -----

@@ -24,6 +24,7 @@ from estimators.track import Track
 from estimators.zone import Zone
 from estimators.zone_edges import zone_edges
 from estimators.zone_mass import Cells, antipode_inside, integrated_zone_mass
+from estimators.zone_month import MonthFacts, ZoneMonth
 
 FloatArray = NDArray[np.float64]
 EstimatorName = Literal["random_walk", "brownian_bridge"]
@@ -46,56 +47,6 @@ class ZoneUseOptions:
     estimator: EstimatorName = "random_walk"
     longest_bridged_gap_hours: float = DEFAULT_LONGEST_BRIDGED_GAP_HOURS
     minimum_stay_hours: float = DEFAULT_MINIMUM_STAY_HOURS
-
-
-@dataclass(frozen=True)
-class MonthFacts:
-    """What is known of an animal in a month, whatever the zone.
-
-    Attributes
-    ----------
-    month : str, ``"2026-03"``
-    fixes : int, fixes within the tracked time
-    tracked_hours, covered_hours, longest_gap_hours : float
-    flags : tuple of str: assumed_error, zero_position, wide_spread, variance_from_prior
-    """
-
-    month: str
-    fixes: int
-    tracked_hours: float
-    covered_hours: float
-    longest_gap_hours: float
-    flags: tuple[str, ...]
-
-
-@dataclass(frozen=True)
-class ZoneMonth:
-    """Use of one zone in one month.
-
-    Attributes
-    ----------
-    zone_index : int, place of the zone in the list given
-    month : str
-    fixes : int
-    in_force_hours : float, tracked time that the zone was in force
-    tracked_hours, covered_hours, longest_gap_hours : float, of the time in force
-    probability_mass, numerical_error, time_fraction : float or None, None without covered time
-    inside_hours : float, along the straight path
-    visits : int
-    """
-
-    zone_index: int
-    month: str
-    fixes: int
-    in_force_hours: float
-    tracked_hours: float
-    covered_hours: float
-    longest_gap_hours: float
-    probability_mass: float | None
-    numerical_error: float | None
-    time_fraction: float | None
-    inside_hours: float
-    visits: int
 
 
 @dataclass(frozen=True)
@@ -241,6 +192,7 @@ def _month_facts(animal: _Animal, fit: VariancePosterior) -> list[MonthFacts]:
         facts.append(
             MonthFacts(
                 month.month,
+                animal.tracked[k][0][0],
                 fixes,
                 _hours(length_ms(animal.tracked[k])),
                 _hours(covered[k]),
@@ -263,7 +215,7 @@ def _zone_rows(animal: _Animal, index: int, zone: Zone) -> list[ZoneMonth]:
     for path in animal.paths:
         part = integrated_zone_mass(path, zone.shape, edges, cells, len(spans))
         sums[:, :2] += path.weight * part[:, :2]
-        sums[:, 2] = np.maximum(sums[:, 2], part[:, 2])
+        sums[:, 2] += part[:, 2]
     turned = antipode_inside(zone.shape, edges, animal.paths[0])
     period, start_ms, end_ms = inside_stretches(animal.steps, edges, turned, cells)
     inside = np.bincount(period, weights=end_ms - start_ms, minlength=len(spans))
