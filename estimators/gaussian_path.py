@@ -7,15 +7,17 @@ quadratic; that holds for the random walk with location error and for the Browni
 from __future__ import annotations
 
 from dataclasses import dataclass
+from typing import Final
 
 import numpy as np
 from numpy.typing import NDArray
 
-from estimators.defaults import LONGEST_STEP_M
+from estimators.defaults import EDGE_REACH_SD, LONGEST_STEP_M
 from estimators.frames import WGS84, StepParts, carrying_rotation, east_north_axes, step_parts
 from estimators.track import Track
 
 FloatArray = NDArray[np.float64]
+_BLOCK: Final = 128
 
 
 @dataclass(frozen=True)
@@ -108,6 +110,22 @@ class GaussianPath:
         """Covariance at a share of a part, shape (2, 2), square metres."""
         xx, xy, yy = self.covariance_m2[part].T @ np.array([1.0, share, share * share])
         return np.array([[xx, xy], [xy, yy]])
+
+    def reach_m(self) -> FloatArray:
+        """Distance from each part's origin beyond which no edge matters to it, shape (n,), metres."""
+        length_m = np.maximum(np.hypot(*self.start_m.T), np.hypot(*self.end_m.T))
+        return np.asarray((EDGE_REACH_SD * self.largest_sd_m() + length_m) * 1.001 + 1.0)
+
+    def block_balls_m(self) -> FloatArray:
+        """Balls around consecutive parts and their reach, shape (n_blocks, 4), centre and radius, metres."""
+        if len(self.steps) == 0:
+            return np.empty((0, 4))
+        origins, reach = self.steps.parts.origin_m, self.reach_m()
+        first = np.arange(0, len(origins), _BLOCK)
+        count = np.diff(np.append(first, len(origins)))
+        centre = np.add.reduceat(origins, first) / count[:, None]
+        away = np.linalg.norm(origins - np.repeat(centre, count, axis=0), axis=1) + reach
+        return np.column_stack([centre, np.maximum.reduceat(away, first)])
 
     def largest_sd_m(self) -> FloatArray:
         """Upper bound of the standard deviation over each part, shape (n,), metres.

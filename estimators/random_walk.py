@@ -61,7 +61,24 @@ def _filter(
     return total
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
+def _product(p: Any, q: Any) -> Any:  # pragma: no cover - compiled
+    """Product of two 2×2 matrices, each as its rows one after the other."""
+    return (
+        p[0] * q[0] + p[1] * q[2],
+        p[0] * q[1] + p[1] * q[3],
+        p[2] * q[0] + p[3] * q[2],
+        p[2] * q[1] + p[3] * q[3],
+    )
+
+
+@njit(cache=True, error_model="numpy")
+def _turned(p: Any, q: Any) -> Any:  # pragma: no cover - compiled
+    """P q pᵀ for 2×2 matrices."""
+    return _product(_product(p, q), (p[0], p[2], p[1], p[3]))
+
+
+@njit(cache=True, error_model="numpy")
 def _smooth(
     seen: Any, turn: Any, gap_s: Any, longest_s: float, q: float, mean: Any, cov: Any, lag: Any
 ) -> None:  # pragma: no cover - compiled
@@ -70,21 +87,25 @@ def _smooth(
         if gap_s[k] > longest_s:
             lag[k, :, :] = 0.0
             continue
-        rot = turn[k]
-        p = np.array([[cov[k, 0], cov[k, 1]], [cov[k, 1], cov[k, 2]]])
-        carried = p @ rot.T
-        ahead = rot @ carried
-        ahead[0, 0] += q * gap_s[k]
-        ahead[1, 1] += q * gap_s[k]
-        gain = carried @ np.linalg.inv(ahead)
-        after = np.array([[cov[k + 1, 0], cov[k + 1, 1]], [cov[k + 1, 1], cov[k + 1, 2]]])
-        step = mean[k + 1] - (seen[k] + rot @ mean[k])
-        mean[k] += gain @ step
+        grown = q * gap_s[k]
+        rot = (turn[k, 0, 0], turn[k, 0, 1], turn[k, 1, 0], turn[k, 1, 1])
+        p = (cov[k, 0], cov[k, 1], cov[k, 1], cov[k, 2])
+        s00, s01, _, s11 = _turned(rot, p)
+        s00, s11 = s00 + grown, s11 + grown
+        det = s00 * s11 - s01 * s01
+        gain = _product(_product(p, (rot[0], rot[2], rot[1], rot[3])), (s11 / det, -s01 / det, -s01 / det, s00 / det))
+        step0 = mean[k + 1, 0] - (seen[k, 0] + rot[0] * mean[k, 0] + rot[1] * mean[k, 1])
+        step1 = mean[k + 1, 1] - (seen[k, 1] + rot[2] * mean[k, 0] + rot[3] * mean[k, 1])
+        mean[k, 0] += gain[0] * step0 + gain[1] * step1
+        mean[k, 1] += gain[2] * step0 + gain[3] * step1
         # P - G (A - after) Gᵀ, written so that nothing is subtracted: Joseph form of the backward step.
-        keep = np.eye(2) - gain @ rot
-        p = keep @ p @ keep.T + gain @ (after + q * gap_s[k] * np.eye(2)) @ gain.T
-        cov[k, 0], cov[k, 1], cov[k, 2] = p[0, 0], 0.5 * (p[0, 1] + p[1, 0]), p[1, 1]
-        lag[k] = gain @ after
+        carried = _product(gain, rot)
+        kept = _turned((1.0 - carried[0], -carried[1], -carried[2], 1.0 - carried[3]), p)
+        v00, v01, v11 = cov[k + 1, 0], cov[k + 1, 1], cov[k + 1, 2]
+        fed = _turned(gain, (v00 + grown, v01, v01, v11 + grown))
+        cov[k, 0], cov[k, 2] = kept[0] + fed[0], kept[3] + fed[3]
+        cov[k, 1] = 0.5 * (kept[1] + kept[2] + fed[1] + fed[2])
+        lag[k, 0, 0], lag[k, 0, 1], lag[k, 1, 0], lag[k, 1, 1] = _product(gain, (v00, v01, v01, v11))
 
 
 class RandomWalk:

@@ -14,7 +14,9 @@ from numpy.typing import NDArray
 from shapely import MultiPolygon, Polygon
 
 from estimators.errors import ZoneGeometryError
+from estimators.frames import earth_centred_m
 from estimators.months import Season, Span, intersect_spans
+from estimators.zone_edges import GIANT_RADIUS_M, ZoneEdges, zone_edges
 from estimators.zone_rings import ReadRing, read_ring
 
 FloatArray = NDArray[np.float64]
@@ -107,6 +109,25 @@ class ZoneShape:
             ]
             rounded.append(rings)
         return {"type": "MultiPolygon", "coordinates": rounded}
+
+    @cached_property
+    def boundary(self) -> ZoneEdges:
+        """The boundary prepared for the kernels."""
+        return zone_edges(self.polygon, geodesic=self.edges == "geodesic")
+
+    @cached_property
+    def rough_ball_m(self) -> FloatArray | None:
+        """Ball that surely holds the zone: Earth-centred centre and radius, shape (4,), metres; None if it is giant."""
+        lon, lat = shapely.get_coordinates(self.polygon).T
+        places = earth_centred_m(lon, lat)
+        centre = 0.5 * (places.min(axis=0) + places.max(axis=0))
+        same_side = lat[:-1] * lat[1:] > 0.0
+        nearest_equator = np.where(same_side, np.minimum(np.abs(lat[:-1]), np.abs(lat[1:])), 0.0)
+        width = np.diff(lon) * np.cos(np.deg2rad(nearest_equator))
+        # An edge strays from its ends by at most half its length; no radius of the ellipsoid is above 6400 km.
+        stray_m = 0.5 * 6_400_000.0 * np.deg2rad(np.hypot(width, np.diff(lat)).max())
+        radius_m = float(np.sqrt(((places - centre) ** 2).sum(axis=1).max()) + stray_m)
+        return np.array([*centre, radius_m]) if radius_m < GIANT_RADIUS_M else None
 
     def contains(self, lon_deg: FloatArray, lat_deg: FloatArray) -> NDArray[np.bool_]:
         """Whether places lie inside in longitude and latitude (straight edges).

@@ -7,22 +7,25 @@ pieces as one straight line, since seen from outside the ball they sweep the sam
 
 from __future__ import annotations
 
+import math
 from itertools import pairwise
-from typing import Final, NamedTuple
+from typing import Any, Final, NamedTuple
 
 import numpy as np
+from numba import njit
 from numpy.typing import NDArray
+from shapely import MultiPolygon
 
 from estimators.defaults import EDGE_DEVIATION_FINEST_M
 from estimators.frames import MEAN_RADIUS_M, WGS84, earth_centred_m
-from estimators.zone import ZoneShape
 
 FloatArray = NDArray[np.float64]
 IntArray = NDArray[np.int64]
 
 LEVELS: Final = 8
 _LONGEST_PIECE_M: Final = 2000.0
-_GIANT_RADIUS_M: Final = 0.7 * MEAN_RADIUS_M
+GIANT_RADIUS_M: Final = 0.7 * MEAN_RADIUS_M
+"""A zone whose ball is larger may hold the antipode of a place near its own edges."""
 
 
 class ZoneEdges(NamedTuple):
@@ -52,12 +55,13 @@ class ZoneEdges(NamedTuple):
     giant: bool
 
 
-def zone_edges(shape: ZoneShape) -> ZoneEdges:
+def zone_edges(polygon: MultiPolygon, *, geodesic: bool) -> ZoneEdges:
     """Prepare a zone's boundary for the kernels.
 
     Parameters
     ----------
-    shape : ZoneShape
+    polygon : shapely.MultiPolygon, degrees, longitudes running on
+    geodesic : bool, edges are geodesics, not straight in longitude and latitude
 
     Returns
     -------
@@ -69,12 +73,10 @@ def zone_edges(shape: ZoneShape) -> ZoneEdges:
     Cuts lie on a lattice of longitudes or latitudes that no zone chooses, so that zones with a common edge
     have the same pieces along it.
     """
-    rings = [
-        np.asarray(ring.coords)[:, :2] for part in shape.polygon.geoms for ring in (part.exterior, *part.interiors)
-    ]
+    rings = [np.asarray(ring.coords)[:, :2] for part in polygon.geoms for ring in (part.exterior, *part.interiors)]
     tree = _Tree()
     for level in range(LEVELS):
-        pieces = [_pieces(ring, level, shape.edges == "geodesic") for ring in rings]
+        pieces = [_pieces(ring, level, geodesic) for ring in rings]
         for piece in pieces:
             tree.add_ring(earth_centred_m(piece[:, 0], piece[:, 1]))
         tree.level_first_root.append(len(tree.roots))
@@ -121,7 +123,7 @@ class _Tree:
             np.array(self.roots, dtype=np.int64),
             np.array(self.level_first_root, dtype=np.int64),
             np.array([*centre, radius]),
-            radius > _GIANT_RADIUS_M,
+            radius > GIANT_RADIUS_M,
         )
 
 
@@ -179,57 +181,72 @@ def _levels(children: IntArray) -> list[IntArray]:
 
 def _pieces(ring: FloatArray, level: int, geodesic: bool) -> FloatArray:
     """Positions of a ring with cuts put in wherever a straight piece would leave the true edge."""
+    if not geodesic:
+        return np.asarray(_straight_pieces(np.ascontiguousarray(ring), level))
     out = [ring[:1]]
     for a, b in pairwise(ring):
-        cuts = _geodesic_cuts(a, b, level) if geodesic else _straight_cuts(a, b, level)
-        out += [cuts, b[None, :]]
+        out += [_geodesic_cuts(a, b, level), b[None, :]]
     return np.concatenate(out)
 
 
-def _longest_lon_rad(slope: float, lat_deg: float, level: int) -> float:
-    """Longest width of a piece, radians of longitude, that stays within the level's deviation of its edge.
+@njit(cache=True)
+def _straight_pieces(ring: Any, level: int) -> Any:  # pragma: no cover - compiled
+    steps, count = np.empty(len(ring) - 1), len(ring)
+    for k in range(len(ring) - 1):
+        steps[k] = _lattice_step_deg(ring[k, 0], ring[k, 1], ring[k + 1, 0], ring[k + 1, 1], level)
+        count += _lattice_cuts(ring[k], ring[k + 1], steps[k], ring, -1)
+    pieces = np.empty((count, 2))
+    pieces[0] = ring[0]
+    row = 1
+    for k in range(len(ring) - 1):
+        row += _lattice_cuts(ring[k], ring[k + 1], steps[k], pieces, row)
+        pieces[row] = ring[k + 1]
+        row += 1
+    return pieces
+
+
+@njit(cache=True)
+def _lattice_step_deg(x1: float, y1: float, x2: float, y2: float, level: int) -> float:  # pragma: no cover
+    """Distance of the cuts of an edge along its longer axis, a power of two of degrees; 0 where none is needed.
 
     The sagitta of an edge straight in longitude and latitude against the geodesic is at most
     R/8 · Δλ · (Δλ |sin φ cos φ| + 2 |Δφ sin φ|).
     """
-    # Rounded up in bands, so that a part of an edge is cut as the whole of it.
-    band = np.deg2rad(min(90.0, 15.0 * np.ceil(abs(lat_deg) / 15.0)))
-    bend = min(0.5, np.sin(band)) + 2.0 * slope * np.sin(band)
-    allowed_m = EDGE_DEVIATION_FINEST_M * 4.0**level
-    return float(np.sqrt(8.0 * allowed_m / (MEAN_RADIUS_M * max(bend, 1e-12))))
+    width, height = abs(x2 - x1), abs(y2 - y1)
+    if (width == 0.0 and height == 0.0) or (abs(y1) == 90.0 and y1 == y2):
+        return 0.0
+    extent, slope = max(width, height), (height / width if width > 0.0 else 1e300)
+    step = math.degrees(_LONGEST_PIECE_M * 2.0**level / MEAN_RADIUS_M)
+    if width > 0.0:
+        # The latitude rounded up in bands, so that a part of an edge is cut as the whole of it.
+        band = math.sin(math.radians(min(90.0, 15.0 * math.ceil(max(abs(y1), abs(y2)) / 15.0))))
+        bend = max(min(0.5, band) + 2.0 * slope * band, 1e-12)
+        longest = math.sqrt(8.0 * EDGE_DEVIATION_FINEST_M * 4.0**level / (MEAN_RADIUS_M * bend))
+        step = min(step, math.degrees(longest) * max(1.0, slope))
+    return 2.0 ** math.floor(math.log2(step)) if extent > step else 0.0
 
 
-def _straight_cuts(a: FloatArray, b: FloatArray, level: int) -> FloatArray:
-    low, high = (a, b) if tuple(a) <= tuple(b) else (b, a)
-    width, height = high - low
-    if (width == 0.0 and height == 0.0) or (abs(low[1]) == 90.0 and low[1] == high[1]):
-        return np.empty((0, 2))
-    lat_deg = max(abs(low[1]), abs(high[1]))
-    longest_deg = np.rad2deg(_LONGEST_PIECE_M * 2.0**level / MEAN_RADIUS_M)
-    along_lon = width >= abs(height)
-    if along_lon:
-        step = np.rad2deg(_longest_lon_rad(abs(height) / width, lat_deg, level))
-        step = min(step, longest_deg)
-    else:
-        step = longest_deg
-        if width > 0.0:
-            share = abs(height) / width
-            step = min(step, share * np.rad2deg(_longest_lon_rad(share, lat_deg, level)))
-    extent = width if along_lon else abs(height)
-    if extent <= step:
-        return np.empty((0, 2))
-    return _lattice_cuts(low, high, step, 0 if along_lon else 1, reverse=low is b)
-
-
-def _lattice_cuts(low: FloatArray, high: FloatArray, step_deg: float, axis: int, *, reverse: bool) -> FloatArray:
-    """Places on an edge where one coordinate is a multiple of the next power of two below a step."""
-    lattice = 2.0 ** np.floor(np.log2(step_deg))
-    start, end = sorted((low[axis], high[axis]))
-    lines = np.arange(np.floor(start / lattice) + 1, np.ceil(end / lattice)) * lattice
-    share = (lines - low[axis]) / (high[axis] - low[axis])
-    share = np.sort(share)
-    cuts = low + share[:, None] * (high - low)
-    return cuts[::-1] if reverse else cuts
+@njit(cache=True)
+def _lattice_cuts(a: Any, b: Any, step_deg: float, out: Any, row: int) -> int:  # pragma: no cover - compiled
+    """Number of cuts of an edge where its longer axis is a multiple of the step; written from `row` on, if ≥ 0."""
+    if step_deg == 0.0:
+        return 0
+    axis = 0 if abs(b[0] - a[0]) >= abs(b[1] - a[1]) else 1
+    start, end = min(a[axis], b[axis]), max(a[axis], b[axis])
+    first, last = math.floor(start / step_deg) + 1, math.ceil(end / step_deg) - 1
+    count = max(int(last - first) + 1, 0)
+    if row < 0:
+        return count
+    # From the same end whichever way the edge runs, so that neighbours get the same cuts to the last bit.
+    forward = a[0] < b[0] or (a[0] == b[0] and a[1] <= b[1])
+    x, y = (a[0], a[1]) if forward else (b[0], b[1])
+    dx, dy = (b[0] - a[0], b[1] - a[1]) if forward else (a[0] - b[0], a[1] - b[1])
+    rising = b[axis] > a[axis]
+    for k in range(count):
+        line = (first + k if rising else last - k) * step_deg
+        share = (line - x) / dx if axis == 0 else (line - y) / dy
+        out[row + k, 0], out[row + k, 1] = x + share * dx, y + share * dy
+    return count
 
 
 def _geodesic_cuts(a: FloatArray, b: FloatArray, level: int) -> FloatArray:

@@ -276,8 +276,6 @@ def integrated_zone_mass(
     """
     sums = np.zeros((n_periods, 3))
     parts = path.steps.parts
-    length_m = np.maximum(np.hypot(*path.start_m.T), np.hypot(*path.end_m.T))
-    reach_m = (EDGE_REACH_SD * path.largest_sd_m() + length_m) * 1.001 + 1.0
     _integrate(
         edges,
         antipode_inside(shape, edges, path),
@@ -286,7 +284,7 @@ def integrated_zone_mass(
         path.start_m,
         path.end_m,
         path.covariance_m2,
-        reach_m,
+        path.reach_m(),
         (cells.part, cells.period, cells.start, cells.end, cells.duration_ms),
         sums,
     )

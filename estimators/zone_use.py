@@ -13,6 +13,7 @@ from estimators.brownian_bridge import BrownianBridge
 from estimators.defaults import (
     DEFAULT_LONGEST_BRIDGED_GAP_HOURS,
     DEFAULT_MINIMUM_STAY_HOURS,
+    TRIVIAL_NUMERICAL_ERROR,
     WIDE_SPREAD_SD_M,
 )
 from estimators.gaussian_path import CoveredSteps, GaussianPath, covered_steps, path_between_fixes
@@ -22,7 +23,6 @@ from estimators.random_walk import RandomWalk
 from estimators.residence import inside_stretches, visits_per_period
 from estimators.track import Track
 from estimators.zone import Zone
-from estimators.zone_edges import zone_edges
 from estimators.zone_mass import Cells, antipode_inside, integrated_zone_mass
 from estimators.zone_month import MonthFacts, ZoneMonth
 
@@ -76,6 +76,7 @@ class _Animal:
     track: Track
     steps: CoveredSteps
     paths: tuple[GaussianPath, ...]
+    balls_m: FloatArray
     months: list[MonthSpan]
     tracked: list[list[Span]]
     options: ZoneUseOptions
@@ -113,7 +114,8 @@ def estimate_zone_use(
     months = month_spans(tracked[0][0], tracked[-1][1], options.time_zone) if tracked else []
     spans = [intersect_spans([(m.start_ms, m.end_ms)], list(tracked)) for m in months]
     kept = [k for k, span in enumerate(spans) if span]
-    animal = _Animal(track, steps, paths, [months[k] for k in kept], [spans[k] for k in kept], options)
+    balls_m = np.concatenate([path.block_balls_m() for path in paths])
+    animal = _Animal(track, steps, paths, balls_m, [months[k] for k in kept], [spans[k] for k in kept], options)
     rows = [row for index, zone in enumerate(zones) for row in _zone_rows(animal, index, zone)]
     return AnimalZoneUse(options.estimator, _stored(fit), tuple(_month_facts(animal, fit)), tuple(rows))
 
@@ -208,25 +210,53 @@ def _zone_rows(animal: _Animal, index: int, zone: Zone) -> list[ZoneMonth]:
         return []
     in_force = zone.in_force_spans(animal.months[0].start_ms, animal.months[-1].end_ms, animal.options.time_zone)
     spans = [intersect_spans(tracked, in_force) for tracked in animal.tracked]
+    far = _out_of_reach(animal, zone)
+    if far and spans == animal.tracked:
+        return []
     cells = _cells(animal.steps, spans)
     covered = np.bincount(cells.period, weights=cells.duration_ms, minlength=len(spans))
-    edges = zone_edges(zone.shape)
-    sums = np.zeros((len(spans), 3))
-    for path in animal.paths:
-        part = integrated_zone_mass(path, zone.shape, edges, cells, len(spans))
-        sums[:, :2] += path.weight * part[:, :2]
-        sums[:, 2] += part[:, 2]
-    turned = antipode_inside(zone.shape, edges, animal.paths[0])
-    period, start_ms, end_ms = inside_stretches(animal.steps, edges, turned, cells)
-    inside = np.bincount(period, weights=end_ms - start_ms, minlength=len(spans))
-    visits = visits_per_period(period, start_ms, end_ms, len(spans), animal.options.minimum_stay_hours * _HOUR_MS)
+    if far:
+        sums = np.outer(covered, [0.0, TRIVIAL_NUMERICAL_ERROR, 0.0])
+        use = _InZone(sums, np.zeros(len(spans)), np.zeros(len(spans), np.int64))
+    else:
+        use = _in_zone(animal, zone, cells, len(spans))
     rows = []
     for k, span in enumerate(spans):
-        trivial = span == animal.tracked[k] and sums[k, 2] == 0.0 and sums[k, 0] == 0.0 and inside[k] == 0.0
-        if span and not trivial:
-            figures = (covered[k], sums[k], inside[k], int(visits[k]))
+        untouched = use.sums[k, 2] == 0.0 and use.sums[k, 0] == 0.0 and use.inside_ms[k] == 0.0
+        if span and not (untouched and span == animal.tracked[k]):
+            figures = (covered[k], use.sums[k], use.inside_ms[k], int(use.visits[k]))
             rows.append(_row(animal, index, k, span, *figures))
     return rows
+
+
+@dataclass(frozen=True)
+class _InZone:
+    """Per month: sums of `integrated_zone_mass`, time inside along the path, visits."""
+
+    sums: FloatArray
+    inside_ms: FloatArray
+    visits: NDArray[np.int64]
+
+
+def _out_of_reach(animal: _Animal, zone: Zone) -> bool:
+    ball_m = zone.shape.rough_ball_m
+    if ball_m is None:
+        return False
+    away2 = ((animal.balls_m[:, :3] - ball_m[:3]) ** 2).sum(axis=1)
+    return bool(np.all(away2 > (animal.balls_m[:, 3] + ball_m[3]) ** 2))
+
+
+def _in_zone(animal: _Animal, zone: Zone, cells: Cells, n_months: int) -> _InZone:
+    edges = zone.shape.boundary
+    sums = np.zeros((n_months, 3))
+    for path in animal.paths:
+        part = integrated_zone_mass(path, zone.shape, edges, cells, n_months)
+        sums += np.array([path.weight, path.weight, 1.0]) * part
+    turned = antipode_inside(zone.shape, edges, animal.paths[0])
+    period, start_ms, end_ms = inside_stretches(animal.steps, edges, turned, cells)
+    inside_ms = np.bincount(period, weights=end_ms - start_ms, minlength=n_months).astype(np.float64)
+    shortest_ms = animal.options.minimum_stay_hours * _HOUR_MS
+    return _InZone(sums, inside_ms, visits_per_period(period, start_ms, end_ms, n_months, shortest_ms))
 
 
 def _row(
