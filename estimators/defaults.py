@@ -37,11 +37,11 @@ axis): from a tortoise to a bird on passage. It is proper, so that two fixes alr
 wide that a few dozen fixes outweigh it.
 """
 
-INTEGRATION_LIMIT: Final = 5e-7
+INTEGRATION_LIMIT: Final = 9e-7
 """Largest error that the time integral of a zone mass may have, as a share of the covered time."""
 
-EDGE_REACH_SD: Final = 6.5
-"""Edges further away than this many standard deviations are left out: at most exp(-6.5²/2) = 6.7e-10 lost."""
+EDGE_REACH_SD: Final = 6.0
+"""Edges further away than this many standard deviations are left out: at most exp(-6²/2) = 1.6e-8 lost."""
 
 EDGE_DEVIATION_FINEST_M: Final = 1e-4
 EDGE_DEVIATION_SD_SHARE: Final = 2e-5
@@ -57,5 +57,5 @@ LONGEST_STEP_M: Final = 100_000.0
 WIDE_SPREAD_SD_M: Final = 50_000.0
 """Above this standard deviation the plane frame of a step bends masses by more than about 1e-5; flagged."""
 
-TRIVIAL_NUMERICAL_ERROR: Final = 1e-9
+TRIVIAL_NUMERICAL_ERROR: Final = 2e-8
 """Numerical error of a mass that is 0 or 1 because no edge is in reach."""

@@ -11,9 +11,10 @@ from dataclasses import dataclass
 from typing import Any, Final
 
 import numpy as np
-from numba import njit
 from numpy.typing import NDArray
 from pyproj import Geod
+
+from estimators.compiled import compiled
 
 FloatArray = NDArray[np.float64]
 
@@ -148,7 +149,7 @@ def step_parts(lon_deg: FloatArray, lat_deg: FloatArray, steps: NDArray[np.int64
     return StepParts(steps[of], shares[0], shares[2], origin_lon, origin_lat, origin_m, axes, start_m, end_m)
 
 
-@njit(cache=True, error_model="numpy")
+@compiled()
 def plane_point_m(
     x: float, y: float, z: float, origin_m: Any, axes: Any
 ) -> tuple[float, float]:  # pragma: no cover - compiled
@@ -171,7 +172,7 @@ def plane_point_m(
     return east * scale, north * scale
 
 
-@njit(cache=True, error_model="numpy")
+@compiled()
 def _plane_points_m(points_m: Any, origin_m: Any, axes: Any) -> Any:  # pragma: no cover - compiled
     found = np.empty((points_m.shape[0], 2))
     for k in range(points_m.shape[0]):

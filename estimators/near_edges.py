@@ -5,13 +5,12 @@ from __future__ import annotations
 import math
 from typing import Any
 
-from numba import njit
-
+from estimators.compiled import compiled
 from estimators.frames import plane_point_m
 from estimators.polygon_mass import upward_edge
 
 
-@njit(cache=True, error_model="numpy")
+@compiled()
 def place_in_space_m(x: float, y: float, origin_m: Any, axes: Any, place: Any) -> None:  # pragma: no cover - compiled
     """Fill in the Earth-centred place of a point of a local plane; errs by its distance to the fourth power over R³."""
     radius = math.sqrt(origin_m[0] ** 2 + origin_m[1] ** 2 + origin_m[2] ** 2)
@@ -20,7 +19,7 @@ def place_in_space_m(x: float, y: float, origin_m: Any, axes: Any, place: Any) -
         place[k] = origin_m[k] * (1.0 - drop) + axes[0, k] * x + axes[1, k] * y
 
 
-@njit(cache=True, error_model="numpy")
+@compiled()
 def _shut_out(ball: Any, place: Any, reach: float, origin_m: Any) -> bool:  # pragma: no cover - compiled
     """Whether a ball keeps clear both of a place's surroundings and of the plane's antipode."""
     near = (ball[0] - place[0]) ** 2 + (ball[1] - place[1]) ** 2 + (ball[2] - place[2]) ** 2
@@ -31,7 +30,7 @@ def _shut_out(ball: Any, place: Any, reach: float, origin_m: Any) -> bool:  # pr
     return bool(far > (ball[3] + 1000.0) ** 2)
 
 
-@njit(cache=True, error_model="numpy")
+@compiled()
 def collect_edges(
     edges: Any,
     level: int,

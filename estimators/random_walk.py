@@ -11,16 +11,16 @@ import math
 from typing import Any
 
 import numpy as np
-from numba import njit
 from numpy.typing import NDArray
 
+from estimators.compiled import compiled
 from estimators.gaussian_path import FixMarginals, fix_displacements
 from estimators.track import Track
 
 FloatArray = NDArray[np.float64]
 
 
-@njit(cache=True)
+@compiled()
 def _filter(
     seen: Any, turn: Any, noise: Any, gap_s: Any, longest_s: float, q: float, mean: Any, cov: Any, keep: bool
 ) -> float:  # pragma: no cover - compiled
@@ -61,7 +61,7 @@ def _filter(
     return total
 
 
-@njit(cache=True, error_model="numpy")
+@compiled()
 def _product(p: Any, q: Any) -> Any:  # pragma: no cover - compiled
     """Product of two 2×2 matrices, each as its rows one after the other."""
     return (
@@ -72,13 +72,13 @@ def _product(p: Any, q: Any) -> Any:  # pragma: no cover - compiled
     )
 
 
-@njit(cache=True, error_model="numpy")
+@compiled()
 def _turned(p: Any, q: Any) -> Any:  # pragma: no cover - compiled
     """P q pᵀ for 2×2 matrices."""
     return _product(_product(p, q), (p[0], p[2], p[1], p[3]))
 
 
-@njit(cache=True, error_model="numpy")
+@compiled()
 def _smooth(
     seen: Any, turn: Any, gap_s: Any, longest_s: float, q: float, mean: Any, cov: Any, lag: Any
 ) -> None:  # pragma: no cover - compiled

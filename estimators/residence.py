@@ -9,9 +9,9 @@ import math
 from typing import Any
 
 import numpy as np
-from numba import njit
 from numpy.typing import NDArray
 
+from estimators.compiled import compiled
 from estimators.gaussian_path import CoveredSteps
 from estimators.near_edges import collect_edges, place_in_space_m
 from estimators.polygon_mass import winding_number
@@ -21,7 +21,7 @@ from estimators.zone_mass import Cells
 FloatArray = NDArray[np.float64]
 
 
-@njit(cache=True, error_model="numpy")
+@compiled()
 def _crossings(out: Any, near: int, start: Any, end: Any, lo: float, hi: float, found: Any) -> int:  # pragma: no cover
     """Shares at which the straight way crosses edges, sorted, between lo and hi."""
     dx, dy = end[0] - start[0], end[1] - start[1]
@@ -42,7 +42,7 @@ def _crossings(out: Any, near: int, start: Any, end: Any, lo: float, hi: float, 
     return n
 
 
-@njit(cache=True, error_model="numpy")
+@compiled()
 def _inside_stretches(
     edges: Any, turned: Any, origins: Any, axes: Any, starts: Any, ends: Any, cells: Any
 ) -> Any:  # pragma: no cover - compiled

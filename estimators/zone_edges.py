@@ -12,10 +12,10 @@ from itertools import pairwise
 from typing import Any, Final, NamedTuple
 
 import numpy as np
-from numba import njit
 from numpy.typing import NDArray
 from shapely import MultiPolygon
 
+from estimators.compiled import compiled
 from estimators.defaults import EDGE_DEVIATION_FINEST_M
 from estimators.frames import MEAN_RADIUS_M, WGS84, earth_centred_m
 
@@ -189,7 +189,7 @@ def _pieces(ring: FloatArray, level: int, geodesic: bool) -> FloatArray:
     return np.concatenate(out)
 
 
-@njit(cache=True)
+@compiled()
 def _straight_pieces(ring: Any, level: int) -> Any:  # pragma: no cover - compiled
     steps, count = np.empty(len(ring) - 1), len(ring)
     for k in range(len(ring) - 1):
@@ -205,7 +205,7 @@ def _straight_pieces(ring: Any, level: int) -> Any:  # pragma: no cover - compil
     return pieces
 
 
-@njit(cache=True)
+@compiled()
 def _lattice_step_deg(x1: float, y1: float, x2: float, y2: float, level: int) -> float:  # pragma: no cover
     """Distance of the cuts of an edge along its longer axis, a power of two of degrees; 0 where none is needed.
 
@@ -226,7 +226,7 @@ def _lattice_step_deg(x1: float, y1: float, x2: float, y2: float, level: int) ->
     return 2.0 ** math.floor(math.log2(step)) if extent > step else 0.0
 
 
-@njit(cache=True)
+@compiled()
 def _lattice_cuts(a: Any, b: Any, step_deg: float, out: Any, row: int) -> int:  # pragma: no cover - compiled
     """Number of cuts of an edge where its longer axis is a multiple of the step; written from `row` on, if ≥ 0."""
     if step_deg == 0.0:

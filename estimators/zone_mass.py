@@ -14,9 +14,9 @@ from dataclasses import dataclass
 from typing import Any, Final
 
 import numpy as np
-from numba import njit
 from numpy.typing import NDArray
 
+from estimators.compiled import compiled
 from estimators.defaults import (
     EDGE_DEVIATION_FINEST_M,
     EDGE_DEVIATION_SD_SHARE,
@@ -60,17 +60,17 @@ class Cells:
     duration_ms: FloatArray
 
 
-@njit(cache=True, error_model="numpy")
+@compiled()
 def _largest_eigenvalue(xx: float, xy: float, yy: float) -> float:  # pragma: no cover - compiled
     return 0.5 * (xx + yy) + math.sqrt(0.25 * (xx - yy) * (xx - yy) + xy * xy)
 
 
-@njit(cache=True, error_model="numpy")
+@compiled()
 def _at(p: Any, share: float, k: int) -> float:  # pragma: no cover - compiled
     return float(p[0, k] + share * (p[1, k] + share * p[2, k]))
 
 
-@njit(cache=True, error_model="numpy")
+@compiled()
 def _panel_sds(p: Any, lo: float, hi: float) -> tuple[float, float]:  # pragma: no cover - compiled
     """Upper bound of the standard deviation over a panel, and its least value at the panel's ends and middle."""
     top, low = 0.0, 1e300
@@ -90,7 +90,7 @@ def _panel_sds(p: Any, lo: float, hi: float) -> tuple[float, float]:  # pragma: 
     return math.sqrt(top), math.sqrt(max(low, 0.0))
 
 
-@njit(cache=True, error_model="numpy")
+@compiled()
 def _whitened(p: Any, middle: float, half: float, dx: float, dy: float, q: Any) -> float:  # pragma: no cover
     """Covariance polynomial in z, share = middle + half z, whitened at z = 0; returns the whitened mean's speed."""
     a = math.sqrt(_at(p, middle, 0))
@@ -110,12 +110,12 @@ def _whitened(p: Any, middle: float, half: float, dx: float, dy: float, q: Any) 
     return math.hypot(ux, uy)
 
 
-@njit(cache=True, error_model="numpy")
+@compiled()
 def _norm(xx: float, xy: float, yy: float) -> float:  # pragma: no cover - compiled
     return abs(0.5 * (xx + yy)) + math.sqrt(0.25 * (xx - yy) * (xx - yy) + xy * xy)
 
 
-@njit(cache=True, error_model="numpy")
+@compiled()
 def _rule_for_panel(
     p: Any, lo: float, hi: float, dx: float, dy: float, q: Any, limit: float
 ) -> tuple[int, float]:  # pragma: no cover
@@ -143,15 +143,18 @@ def _rule_for_panel(
         if power > 600.0:
             break
         growth = math.sqrt(1.0 + (turn / least) ** 2) * math.exp(power)
+        better = False
         for k in range(min(rule + 1, len(_COUNTS))):
             reached = growth * _DECAY[row, k]
             if reached <= limit and (k < rule or reached < bound):
-                rule, bound = k, reached
+                rule, bound, better = k, reached, True
                 break
+        if not better and rule < len(_COUNTS):
+            break
     return (rule, bound) if rule < len(_COUNTS) else (-1, 1.0)
 
 
-@njit(cache=True, error_model="numpy")
+@compiled()
 def _cell_mass(
     edges: Any, origin: Any, axes: Any, start: Any, end: Any, p: Any, lo0: float, hi0: float, work: Any
 ) -> tuple[float, float, int]:  # pragma: no cover - compiled
@@ -206,7 +209,7 @@ def _cell_mass(
     return total, error, pairs
 
 
-@njit(cache=True, error_model="numpy")
+@compiled()
 def _integrate(
     edges: Any,
     turned: Any,
