@@ -155,6 +155,29 @@ def _rule_for_panel(
 
 
 @compiled()
+def _panel_mass(
+    out: Any, near: int, far: int, rule: int, start: Any, end: Any, p: Any, lo: float, hi: float
+) -> float:  # pragma: no cover - compiled
+    """Mean mass over a panel by a Gauss rule."""
+    middle, half, total = 0.5 * (lo + hi), 0.5 * (hi - lo), 0.0
+    for k in range(_COUNTS[rule]):
+        share = middle + half * _X[rule, k]
+        x, y = start[0] + share * (end[0] - start[0]), start[1] + share * (end[1] - start[1])
+        xx, xy, yy = _at(p, share, 0), _at(p, share, 1), _at(p, share, 2)
+        total += _W[rule, k] * mass_of_edges(out, near, far, x, y, xx, xy, yy)
+    return 0.5 * total
+
+
+@compiled()
+def _level_of_detail(edges: Any, least_sd_m: float) -> int:  # pragma: no cover - compiled
+    """Coarsest level of the boundary that a path of at least this standard deviation may be held against."""
+    level, deviation_m, top = 0, EDGE_DEVIATION_FINEST_M, len(edges.level_first_root) - 2
+    while level < top and 4.0 * deviation_m <= EDGE_DEVIATION_SD_SHARE * least_sd_m:
+        level, deviation_m = level + 1, 4.0 * deviation_m
+    return level
+
+
+@compiled()
 def _cell_mass(
     edges: Any, origin: Any, axes: Any, start: Any, end: Any, p: Any, lo0: float, hi0: float, work: Any
 ) -> tuple[float, float, int]:  # pragma: no cover - compiled
@@ -163,26 +186,23 @@ def _cell_mass(
     panels[0, 0], panels[0, 1], panels[0, 2] = lo0, hi0, 0.0
     depth, total, error, pairs = 1, 0.0, 0.0, 0
     dx, dy = end[0] - start[0], end[1] - start[1]
-    top_level = len(edges.level_first_root) - 2
     while depth > 0:
         depth -= 1
         lo, hi, halvings = panels[depth, 0], panels[depth, 1], panels[depth, 2]
         largest, least = _panel_sds(p, lo, hi)
-        middle, half = 0.5 * (lo + hi), 0.5 * (hi - lo)
+        middle, width = 0.5 * (lo + hi), hi - lo
         mx, my = start[0] + middle * dx, start[1] + middle * dy
-        reach = EDGE_REACH_SD * largest
-        run = half * math.hypot(dx, dy)
-        level, coarsest_m, allowed_m = 0, EDGE_DEVIATION_FINEST_M, EDGE_DEVIATION_SD_SHARE * least
-        while level < top_level and 4.0 * coarsest_m <= allowed_m:
-            level, coarsest_m = level + 1, 4.0 * coarsest_m
+        reach = EDGE_REACH_SD * largest + 0.5 * width * math.sqrt(dx * dx + dy * dy)
         rule, bound = -1, 1.0
         if halvings > 0.0:
             rule, bound = _rule_for_panel(p, lo, hi, dx, dy, q, INTEGRATION_LIMIT)
+        # Edges are looked for at every other halving only; until then a panel is held to be near.
         if rule >= 0 or halvings % 2.0 == 0.0:
             place_in_space_m(mx, my, origin, axes, place)
-            near, far = collect_edges(edges, level, place, reach + run, origin, axes, out, stack)
+            level = _level_of_detail(edges, least)
+            near, far = collect_edges(edges, level, place, reach, origin, axes, out, stack)
             if near == 0:
-                total += 2.0 * half * winding_number(out, len(out) - far, len(out), mx, my)
+                total += width * winding_number(out, len(out) - far, len(out), mx, my)
                 continue
         if halvings == 0.0:
             rule, bound = _rule_for_panel(p, lo, hi, dx, dy, q, INTEGRATION_LIMIT)
@@ -191,21 +211,10 @@ def _cell_mass(
             panels[depth + 1, 0], panels[depth + 1, 1], panels[depth + 1, 2] = lo, middle, halvings + 1.0
             depth += 2
             continue
-        error += 2.0 * half * (bound + near * EDGE_ERROR)
-        pairs += near * _COUNTS[max(rule, 0)]
-        for k in range(_COUNTS[max(rule, 0)]):
-            share = middle + half * _X[max(rule, 0), k]
-            mass = mass_of_edges(
-                out,
-                near,
-                far,
-                start[0] + share * dx,
-                start[1] + share * dy,
-                _at(p, share, 0),
-                _at(p, share, 1),
-                _at(p, share, 2),
-            )
-            total += half * _W[max(rule, 0), k] * mass
+        rule = max(rule, 0)
+        error += width * (bound + near * EDGE_ERROR)
+        pairs += near * _COUNTS[rule]
+        total += width * _panel_mass(out, near, far, rule, start, end, p, lo, hi)
     return total, error, pairs
 
 

@@ -5,7 +5,7 @@ import os
 import platform
 import sys
 
-ALL = ("zone_mass_kernel",)
+ALL = ("zone_mass_kernel", "ingest", "recompute", "demo")
 
 
 def main() -> int:

@@ -40,3 +40,24 @@ def star_zone(vertices: int, radius_m: float, seed: int = 2, lon_deg: float = 10
 def whole_span(track: Track) -> list[tuple[int, int]]:
     """Tracked time from the first to the last fix."""
     return [(int(track.time_ms[0]), int(track.time_ms[-1]))]
+
+
+def csv_of(tracks: dict[str, Track]) -> str:
+    """The fixes of named animals as a pipeline posts them, errors stated."""
+    lines = ["animal,time,lon,lat,sd_m"]
+    for name, track in tracks.items():
+        times = np.datetime_as_string(track.time_ms.astype("datetime64[ms]"), unit="s")
+        lines += [
+            f"{name},{time}Z,{lon:.6f},{lat:.6f},{SD_M:g}"
+            for time, lon, lat in zip(times, track.lon_deg, track.lat_deg, strict=True)
+        ]
+    return "\n".join(lines) + "\n"
+
+
+def zone_features(zones: dict[str, Zone]) -> dict[str, object]:
+    """Zones as the FeatureCollection that is posted."""
+    features = [
+        {"type": "Feature", "id": name, "properties": {"name": name}, "geometry": zone.shape.to_geojson()}
+        for name, zone in zones.items()
+    ]
+    return {"type": "FeatureCollection", "features": features}
