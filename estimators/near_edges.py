@@ -20,14 +20,11 @@ def place_in_space_m(x: float, y: float, origin_m: Any, axes: Any, place: Any) -
 
 
 @compiled()
-def _shut_out(ball: Any, place: Any, reach: float, origin_m: Any) -> bool:  # pragma: no cover - compiled
-    """Whether a ball keeps clear both of a place's surroundings and of the plane's antipode."""
+def _is_far(ball: Any, place: Any, reach: float) -> bool:  # pragma: no cover - compiled
+    """Whether a ball keeps clear of a place's surroundings."""
     near = (ball[0] - place[0]) ** 2 + (ball[1] - place[1]) ** 2 + (ball[2] - place[2]) ** 2
     clear = ball[3] + reach
-    if near <= clear * clear:
-        return False
-    far = (ball[0] + origin_m[0]) ** 2 + (ball[1] + origin_m[1]) ** 2 + (ball[2] + origin_m[2]) ** 2
-    return bool(far > (ball[3] + 1000.0) ** 2)
+    return bool(near > clear * clear)
 
 
 @compiled()
@@ -61,12 +58,12 @@ def collect_edges(
     last_vertex, last_x, last_y = -1, 0.0, 0.0
     for r in range(edges.level_first_root[level], edges.level_first_root[level + 1]):
         stack[0], depth = edges.root[r], 1
-        if _shut_out(edges.node_ball_m[edges.root[r]], place, margin, origin_m):
+        if _is_far(edges.node_ball_m[edges.root[r]], place, margin):
             continue
         while depth > 0:
             depth -= 1
             node = stack[depth]
-            far = _shut_out(edges.node_ball_m[node], place, margin, origin_m)
+            far = _is_far(edges.node_ball_m[node], place, margin)
             if not far and edges.node_left[node] >= 0:
                 stack[depth], stack[depth + 1] = edges.node_right[node], edges.node_left[node]
                 depth += 2

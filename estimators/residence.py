@@ -44,7 +44,7 @@ def _crossings(out: Any, near: int, start: Any, end: Any, lo: float, hi: float, 
 
 @compiled()
 def _inside_stretches(
-    edges: Any, turned: Any, origins: Any, axes: Any, starts: Any, ends: Any, cells: Any
+    edges: Any, origins: Any, axes: Any, starts: Any, ends: Any, cells: Any
 ) -> Any:  # pragma: no cover - compiled
     """Rows of cell, first share, last share for every stretch inside, in order."""
     part, lows, highs = cells
@@ -56,9 +56,8 @@ def _inside_stretches(
         k = part[c]
         dx, dy = ends[k, 0] - starts[k, 0], ends[k, 1] - starts[k, 1]
         reach = 0.5 * math.hypot(dx, dy) + 1.0
-        offset = turned[k] if edges.giant else 0
         gap2 = (ball[0] - origins[k, 0]) ** 2 + (ball[1] - origins[k, 1]) ** 2 + (ball[2] - origins[k, 2]) ** 2
-        if gap2 > (ball[3] + 1.001 * reach + 1.0) ** 2 and not edges.giant:
+        if gap2 > (ball[3] + 1.001 * reach + 1.0) ** 2:
             continue
         mx, my = starts[k, 0] + 0.5 * dx, starts[k, 1] + 0.5 * dy
         place_in_space_m(mx, my, origins[k], axes[k], place)
@@ -72,7 +71,7 @@ def _inside_stretches(
                 continue
             share = 0.5 * (lo + hi)
             px, py = starts[k, 0] + share * dx, starts[k, 1] + share * dy
-            winding = offset + winding_number(out, 0, near, px, py)
+            winding = winding_number(out, 0, near, px, py)
             winding += winding_number(out, len(out) - far, len(out), px, py)
             if winding > 0:
                 if n > 0 and rows[n - 1, 0] == c and rows[n - 1, 2] == lo:
@@ -89,7 +88,7 @@ def _inside_stretches(
 
 
 def inside_stretches(
-    steps: CoveredSteps, edges: ZoneEdges, turned: NDArray[np.int64], cells: Cells
+    steps: CoveredSteps, edges: ZoneEdges, cells: Cells
 ) -> tuple[NDArray[np.int64], FloatArray, FloatArray]:
     """Stretches of time that the straight path is inside a zone.
 
@@ -97,7 +96,6 @@ def inside_stretches(
     ----------
     steps : CoveredSteps
     edges : ZoneEdges
-    turned : ndarray of int, from `antipode_inside`
     cells : Cells, in time order
 
     Returns
@@ -107,7 +105,6 @@ def inside_stretches(
     parts = steps.parts
     rows = _inside_stretches(
         edges,
-        turned,
         parts.origin_m,
         parts.axes,
         parts.start_m,

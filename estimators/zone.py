@@ -16,7 +16,8 @@ from shapely import MultiPolygon, Polygon
 from estimators.errors import ZoneGeometryError
 from estimators.frames import earth_centred_m
 from estimators.months import Season, Span, intersect_spans
-from estimators.zone_edges import GIANT_RADIUS_M, ZoneEdges, zone_edges
+from estimators.zone_cutting import GIANT_RADIUS_M, cut_at_date_line, follow_geodesics, pieces_by_degrees
+from estimators.zone_edges import ZoneEdges, zone_edges
 from estimators.zone_rings import ReadRing, read_ring
 
 FloatArray = NDArray[np.float64]
@@ -86,7 +87,7 @@ class ZoneShape:
     @cached_property
     def cut_polygon(self) -> MultiPolygon:
         """The shape cut at ±180°, all longitudes in [-180, 180]."""
-        return _cut_at_date_line(self.polygon)
+        return cut_at_date_line(self.polygon)
 
     @property
     def bbox(self) -> list[float]:
@@ -111,9 +112,13 @@ class ZoneShape:
         return {"type": "MultiPolygon", "coordinates": rounded}
 
     @cached_property
-    def boundary(self) -> ZoneEdges:
-        """The boundary prepared for the kernels."""
-        return zone_edges(self.polygon, geodesic=self.edges == "geodesic")
+    def boundaries(self) -> tuple[ZoneEdges, ...]:
+        """The boundary prepared for the kernels; of a giant zone, the boundaries of the pieces that it is cut into."""
+        geodesic = self.edges == "geodesic"
+        if self.rough_ball_m is not None:
+            return (zone_edges(self.polygon, geodesic=geodesic),)
+        polygon = follow_geodesics(self.polygon) if geodesic else self.polygon
+        return tuple(zone_edges(piece, geodesic=False) for piece in pieces_by_degrees(cut_at_date_line(polygon)))
 
     @cached_property
     def rough_ball_m(self) -> FloatArray | None:
@@ -193,9 +198,9 @@ def _polar_polygons(shell: ReadRing, holes: list[ReadRing], pointer: str) -> lis
         raise ZoneGeometryError(
             "hole_outside", "A hole goes around a pole that the outer ring does not enclose.", pointer
         )
-    area = _cut_at_date_line(MultiPolygon([_checked(shell, pointer)]))
+    area = cut_at_date_line(MultiPolygon([_checked(shell, pointer)]))
     for hole in holes:
-        ring = _cut_at_date_line(MultiPolygon([_checked(hole, pointer)]))
+        ring = cut_at_date_line(MultiPolygon([_checked(hole, pointer)]))
         if not area.buffer(1e-9).covers(ring):
             x, y = hole.positions[0]
             raise ZoneGeometryError(
@@ -240,7 +245,7 @@ def _check_valid(polygon: Polygon, pointer: str) -> None:
 def _check_parts_apart(polygons: list[Polygon]) -> None:
     if len(polygons) < 2:
         return
-    cut = [_cut_at_date_line(MultiPolygon([polygon])) for polygon in polygons]
+    cut = [cut_at_date_line(MultiPolygon([polygon])) for polygon in polygons]
     tree = shapely.STRtree(cut)
     first, second = tree.query(cut, predicate="intersects")
     for i, j in zip(first, second, strict=True):
@@ -253,20 +258,6 @@ def _check_parts_apart(polygons: list[Polygon]) -> None:
                 f"/coordinates/{j}",
                 (point.x, point.y),
             )
-
-
-def _cut_at_date_line(shape: MultiPolygon) -> MultiPolygon:
-    west, _, east, _ = shape.bounds
-    if west >= -180.0 and east <= 180.0:
-        return shape
-    pieces: list[Polygon] = []
-    for turn in range(int(np.floor((west + 180.0) / 360.0)), int(np.ceil((east - 180.0) / 360.0)) + 1):
-        window = shapely.box(-180.0 + 360.0 * turn, -90.0, 180.0 + 360.0 * turn, 90.0)
-        inside = shape.intersection(window)
-        for part in getattr(inside, "geoms", [inside]):
-            if isinstance(part, Polygon) and part.area > 0.0:
-                pieces.append(shapely.transform(part, lambda xy, by=360.0 * turn: xy - np.array([by, 0.0])))
-    return MultiPolygon([shapely.orient_polygons(piece) for piece in pieces])
 
 
 def _widest_empty_lon(cut: MultiPolygon) -> tuple[float, float] | None:

@@ -24,8 +24,6 @@ IntArray = NDArray[np.int64]
 
 LEVELS: Final = 8
 _LONGEST_PIECE_M: Final = 2000.0
-GIANT_RADIUS_M: Final = 0.7 * MEAN_RADIUS_M
-"""A zone whose ball is larger may hold the antipode of a place near its own edges."""
 
 
 class ZoneEdges(NamedTuple):
@@ -40,7 +38,6 @@ class ZoneEdges(NamedTuple):
     root : ndarray of int, shape (n_roots,), a node a ring and level
     level_first_root : ndarray of int, shape (n_levels + 1,)
     ball_m : ndarray, shape (4,), ball around the whole boundary
-    giant : bool, the zone may hold the antipode of a place near its own edges
     """
 
     vertices_m: FloatArray
@@ -52,7 +49,6 @@ class ZoneEdges(NamedTuple):
     root: IntArray
     level_first_root: IntArray
     ball_m: FloatArray
-    giant: bool
 
 
 def zone_edges(polygon: MultiPolygon, *, geodesic: bool) -> ZoneEdges:
@@ -123,7 +119,6 @@ class _Tree:
             np.array(self.roots, dtype=np.int64),
             np.array(self.level_first_root, dtype=np.int64),
             np.array([*centre, radius]),
-            radius > GIANT_RADIUS_M,
         )
 
 
@@ -185,7 +180,7 @@ def _pieces(ring: FloatArray, level: int, geodesic: bool) -> FloatArray:
         return np.asarray(_straight_pieces(np.ascontiguousarray(ring), level))
     out = [ring[:1]]
     for a, b in pairwise(ring):
-        out += [_geodesic_cuts(a, b, level), b[None, :]]
+        out += [geodesic_cuts(a, b, _LONGEST_PIECE_M * 2.0**level), b[None, :]]
     return np.concatenate(out)
 
 
@@ -249,10 +244,21 @@ def _lattice_cuts(a: Any, b: Any, step_deg: float, out: Any, row: int) -> int:  
     return count
 
 
-def _geodesic_cuts(a: FloatArray, b: FloatArray, level: int) -> FloatArray:
+def geodesic_cuts(a: FloatArray, b: FloatArray, longest_m: float) -> FloatArray:
+    """Places that cut the geodesic between two places into equal pieces of at most a stated length.
+
+    Parameters
+    ----------
+    a, b : ndarray, shape (2,), longitude and latitude, degrees
+    longest_m : float, metres
+
+    Returns
+    -------
+    ndarray, shape (n, 2), degrees, longitudes running on; the same to the last bit whichever way the edge runs
+    """
     low, high = (a, b) if tuple(a) <= tuple(b) else (b, a)
     azimuth_deg, _, length_m = WGS84.inv(low[0], low[1], high[0], high[1])
-    count = int(np.ceil(length_m / (_LONGEST_PIECE_M * 2.0**level)))
+    count = int(np.ceil(length_m / longest_m))
     if count < 2:
         return np.empty((0, 2))
     lengths = length_m * np.arange(1, count) / count

@@ -27,7 +27,6 @@ from estimators.defaults import (
 from estimators.gaussian_path import GaussianPath
 from estimators.near_edges import collect_edges, place_in_space_m
 from estimators.polygon_mass import EDGE_ERROR, mass_of_edges, winding_number
-from estimators.zone import ZoneShape
 from estimators.zone_edges import ZoneEdges
 
 FloatArray = NDArray[np.float64]
@@ -179,7 +178,7 @@ def _level_of_detail(edges: Any, least_sd_m: float) -> int:  # pragma: no cover 
 
 @compiled()
 def _cell_mass(
-    edges: Any, origin: Any, axes: Any, start: Any, end: Any, p: Any, lo0: float, hi0: float, work: Any
+    edges: Any, origin: Any, axes: Any, start: Any, end: Any, p: Any, lo0: float, hi0: float, limit: float, work: Any
 ) -> tuple[float, float, int]:  # pragma: no cover - compiled
     """Integral of the mass over the shares [lo0, hi0] of a part, its error bound, and pairs of node and near edge."""
     out, stack, panels, q, place = work
@@ -195,7 +194,7 @@ def _cell_mass(
         reach = EDGE_REACH_SD * largest + 0.5 * width * math.sqrt(dx * dx + dy * dy)
         rule, bound = -1, 1.0
         if halvings > 0.0:
-            rule, bound = _rule_for_panel(p, lo, hi, dx, dy, q, INTEGRATION_LIMIT)
+            rule, bound = _rule_for_panel(p, lo, hi, dx, dy, q, limit)
         # Edges are looked for at every other halving only; until then a panel is held to be near.
         if rule >= 0 or halvings % 2.0 == 0.0:
             place_in_space_m(mx, my, origin, axes, place)
@@ -205,7 +204,7 @@ def _cell_mass(
                 total += width * winding_number(out, len(out) - far, len(out), mx, my)
                 continue
         if halvings == 0.0:
-            rule, bound = _rule_for_panel(p, lo, hi, dx, dy, q, INTEGRATION_LIMIT)
+            rule, bound = _rule_for_panel(p, lo, hi, dx, dy, q, limit)
         if rule < 0 and halvings < _DEEPEST:
             panels[depth, 0], panels[depth, 1], panels[depth, 2] = middle, hi, halvings + 1.0
             panels[depth + 1, 0], panels[depth + 1, 1], panels[depth + 1, 2] = lo, middle, halvings + 1.0
@@ -221,7 +220,6 @@ def _cell_mass(
 @compiled()
 def _integrate(
     edges: Any,
-    turned: Any,
     origins: Any,
     axes: Any,
     starts: Any,
@@ -229,6 +227,7 @@ def _integrate(
     covariances: Any,
     reaches: Any,
     cells: Any,
+    limit: float,
     sums: Any,
 ) -> None:  # pragma: no cover - compiled
     part, period, lows, highs, durations = cells
@@ -237,44 +236,34 @@ def _integrate(
     ball = edges.ball_m
     for c in range(len(part)):
         k = part[c]
-        outside = turned[k] if edges.giant else 0
         gap2 = (ball[0] - origins[k, 0]) ** 2 + (ball[1] - origins[k, 1]) ** 2 + (ball[2] - origins[k, 2]) ** 2
-        if gap2 > (ball[3] + reaches[k]) ** 2 and not edges.giant:
+        if gap2 > (ball[3] + reaches[k]) ** 2:
             continue
         total, error, pairs = _cell_mass(
-            edges, origins[k], axes[k], starts[k], ends[k], covariances[k], lows[c], highs[c], work
+            edges, origins[k], axes[k], starts[k], ends[k], covariances[k], lows[c], highs[c], limit, work
         )
         width = highs[c] - lows[c]
         if width <= 0.0:
             continue
-        sums[period[c], 0] += durations[c] * (outside + total / width)
+        sums[period[c], 0] += durations[c] * total / width
         sums[period[c], 1] += durations[c] * error / width
         sums[period[c], 2] += pairs
 
 
-def antipode_inside(shape: ZoneShape, edges: ZoneEdges, path: GaussianPath) -> NDArray[np.int64]:
-    """Whether the zone holds the antipode of each part's origin, shape (n,); asked only of giant zones.
-
-    The winding number in a plane frame tells inside from outside relative to the frame's antipode.
-    """
-    parts = path.steps.parts
-    if not edges.giant:
-        return np.zeros(1, dtype=np.int64)
-    lon = np.mod(parts.origin_lon_deg + 360.0, 360.0) - 180.0
-    return shape.contains(lon, -parts.origin_lat_deg).astype(np.int64)
-
-
 def integrated_zone_mass(
-    path: GaussianPath, shape: ZoneShape, edges: ZoneEdges, cells: Cells, n_periods: int
+    path: GaussianPath, edges: ZoneEdges, cells: Cells, n_periods: int, share: float = 1.0
 ) -> FloatArray:
     """Time that a path is expected to spend inside a zone, per period.
 
     Parameters
     ----------
     path : GaussianPath
-    shape, edges : the zone's shape and its prepared boundary
+    edges : ZoneEdges, a prepared boundary
     cells : Cells, the covered time to integrate over
     n_periods : int
+    share : float
+        Share of the allowed error, where the boundary is one of several pieces of a zone; the pieces are disjoint, so
+        what lies beyond the reach of all their edges is lost only once.
 
     Returns
     -------
@@ -290,7 +279,6 @@ def integrated_zone_mass(
     parts = path.steps.parts
     _integrate(
         edges,
-        antipode_inside(shape, edges, path),
         parts.origin_m,
         parts.axes,
         path.start_m,
@@ -298,8 +286,9 @@ def integrated_zone_mass(
         path.covariance_m2,
         path.reach_m(),
         (cells.part, cells.period, cells.start, cells.end, cells.duration_ms),
+        share * INTEGRATION_LIMIT,
         sums,
     )
     covered = np.bincount(cells.period, weights=cells.duration_ms, minlength=n_periods)
-    sums[:, 1] += TRIVIAL_NUMERICAL_ERROR * covered
+    sums[:, 1] += share * TRIVIAL_NUMERICAL_ERROR * covered
     return sums

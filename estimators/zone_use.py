@@ -23,7 +23,7 @@ from estimators.random_walk import RandomWalk
 from estimators.residence import inside_stretches, visits_per_period
 from estimators.track import Track
 from estimators.zone import Zone
-from estimators.zone_mass import Cells, antipode_inside, integrated_zone_mass
+from estimators.zone_mass import Cells, integrated_zone_mass
 from estimators.zone_month import MonthFacts, ZoneMonth
 
 FloatArray = NDArray[np.float64]
@@ -103,6 +103,8 @@ def estimate_zone_use(
     -------
     AnimalZoneUse
     """
+    if len(track) == 0:
+        return AnimalZoneUse(options.estimator, {}, (), ())
     gap_ms = options.longest_bridged_gap_hours * _HOUR_MS
     model = _MODELS[options.estimator](track, gap_ms)
     steps = covered_steps(track, gap_ms)
@@ -247,13 +249,17 @@ def _out_of_reach(animal: _Animal, zone: Zone) -> bool:
 
 
 def _in_zone(animal: _Animal, zone: Zone, cells: Cells, n_months: int) -> _InZone:
-    edges = zone.shape.boundary
     sums = np.zeros((n_months, 3))
-    for path in animal.paths:
-        part = integrated_zone_mass(path, zone.shape, edges, cells, n_months)
-        sums += np.array([path.weight, path.weight, 1.0]) * part
-    turned = antipode_inside(zone.shape, edges, animal.paths[0])
-    period, start_ms, end_ms = inside_stretches(animal.steps, edges, turned, cells)
+    stretches = []
+    boundaries = zone.shape.boundaries
+    for edges in boundaries:
+        for path in animal.paths:
+            part = integrated_zone_mass(path, edges, cells, n_months, 1.0 / len(boundaries))
+            sums += np.array([path.weight, path.weight, 1.0]) * part
+        stretches.append(inside_stretches(animal.steps, edges, cells))
+    period, start_ms, end_ms = (np.concatenate([stretch[k] for stretch in stretches]) for k in range(3))
+    order = np.lexsort((end_ms, start_ms))
+    period, start_ms, end_ms = period[order], start_ms[order], end_ms[order]
     inside_ms = np.bincount(period, weights=end_ms - start_ms, minlength=n_months).astype(np.float64)
     shortest_ms = animal.options.minimum_stay_hours * _HOUR_MS
     return _InZone(sums, inside_ms, visits_per_period(period, start_ms, end_ms, n_months, shortest_ms))

@@ -36,11 +36,11 @@ def _path_and_cells(fixes: int) -> tuple[GaussianPath, Cells]:
 def _kernel() -> list[Row]:
     path, cells = _path_and_cells(FIXES)
     zone = star_zone(300, 4_800.0)
-    edges = zone.shape.boundary
-    sums = integrated_zone_mass(path, zone.shape, edges, cells, len(path.steps))
+    edges = zone.shape.boundaries[0]
+    sums = integrated_zone_mass(path, edges, cells, len(path.steps))
     error = float((sums[:, 1] / cells.duration_ms).max())
     near, pairs = float(np.mean(sums[:, 2] > 0.0)), float(sums[:, 2].sum())
-    exact_s = median_s(lambda: integrated_zone_mass(path, zone.shape, edges, cells, len(path.steps)))
+    exact_s = median_s(lambda: integrated_zone_mass(path, edges, cells, len(path.steps)))
     return [
         *_against_raster(path, cells, zone, sums),
         Row("near share; pairs of node and near edge per fix", f"{near:.3f}; {pairs / FIXES:.0f}", "a quarter near"),
@@ -59,7 +59,7 @@ def _against_raster(path: GaussianPath, cells: Cells, zone: Zone, sums: np.ndarr
     some = np.nonzero(sums[:, 2] > 0.0)[0][:RASTER_STEPS]
     exact = sums[some, 0] / cells.duration_ms[some]
     few = Cells(some, some, np.zeros(len(some)), np.ones(len(some)), cells.duration_ms[some])
-    exact_s = median_s(lambda: integrated_zone_mass(path, zone.shape, zone.shape.boundary, few, len(path.steps)))
+    exact_s = median_s(lambda: integrated_zone_mass(path, zone.shape.boundaries[0], few, len(path.steps)))
     raster = RasterSum(path, zone.shape, 10.0, 45.0)
     found: dict[str, Row] = {}
     for cell_m, moments in RASTERS:
