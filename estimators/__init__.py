@@ -24,7 +24,7 @@ from estimators.location_error import (
     covariance_from_radius,
     covariance_from_satellites,
 )
-from estimators.months import MonthSpan, Season, local_date_ms, month_spans, reporting_zone
+from estimators.months import MonthSpan, Season, Span, join_spans, local_date_ms, month_spans, reporting_zone
 from estimators.polygon_mass import gaussian_mass_in_polygon
 from estimators.track import Track
 from estimators.zone import Zone, ZoneShape
@@ -48,6 +48,7 @@ __all__ = [
     "MonthSpan",
     "NumericalLimitError",
     "Season",
+    "Span",
     "Track",
     "TrackError",
     "Zone",
@@ -61,6 +62,7 @@ __all__ = [
     "covariance_from_satellites",
     "estimate_zone_use",
     "gaussian_mass_in_polygon",
+    "join_spans",
     "local_date_ms",
     "month_spans",
     "reporting_zone",

@@ -103,23 +103,31 @@ def estimate_zone_use(
     -------
     AnimalZoneUse
     """
-    if len(track) == 0:
-        return AnimalZoneUse(options.estimator, {}, (), ())
     gap_ms = options.longest_bridged_gap_hours * _HOUR_MS
-    model = _MODELS[options.estimator](track, gap_ms)
     steps = covered_steps(track, gap_ms)
+    fit, paths = _fitted_paths(track, steps, options, parameters)
+    months = month_spans(tracked[0][0], tracked[-1][1], options.time_zone) if tracked else []
+    spans = [intersect_spans([(m.start_ms, m.end_ms)], list(tracked)) for m in months]
+    kept = [k for k, span in enumerate(spans) if span]
+    balls_m = np.concatenate([np.empty((0, 4)), *(path.block_balls_m() for path in paths)])
+    animal = _Animal(track, steps, paths, balls_m, [months[k] for k in kept], [spans[k] for k in kept], options)
+    rows = [row for index, zone in enumerate(zones) for row in _zone_rows(animal, index, zone)]
+    return AnimalZoneUse(options.estimator, _stored(fit), tuple(_month_facts(animal, fit)), tuple(rows))
+
+
+def _fitted_paths(
+    track: Track, steps: CoveredSteps, options: ZoneUseOptions, parameters: Mapping[str, Any] | None
+) -> tuple[VariancePosterior, tuple[GaussianPath, ...]]:
+    if len(steps) == 0:
+        # Nothing is covered, and nothing is learned of the movement variance.
+        return variance_posterior(lambda _: 0.0), ()
+    model = _MODELS[options.estimator](track, options.longest_bridged_gap_hours * _HOUR_MS)
     fit = _restored(parameters) if parameters else variance_posterior(model.log_likelihood)
     paths = tuple(
         path_between_fixes(track, steps, model.marginals(variance), variance, weight)
         for variance, weight in zip(fit.variance_m2_per_s, fit.weight, strict=True)
     )
-    months = month_spans(tracked[0][0], tracked[-1][1], options.time_zone) if tracked else []
-    spans = [intersect_spans([(m.start_ms, m.end_ms)], list(tracked)) for m in months]
-    kept = [k for k, span in enumerate(spans) if span]
-    balls_m = np.concatenate([path.block_balls_m() for path in paths])
-    animal = _Animal(track, steps, paths, balls_m, [months[k] for k in kept], [spans[k] for k in kept], options)
-    rows = [row for index, zone in enumerate(zones) for row in _zone_rows(animal, index, zone)]
-    return AnimalZoneUse(options.estimator, _stored(fit), tuple(_month_facts(animal, fit)), tuple(rows))
+    return fit, paths
 
 
 def _stored(fit: VariancePosterior) -> dict[str, Any]:
@@ -162,11 +170,11 @@ def _cells(steps: CoveredSteps, spans: Sequence[Sequence[Span]]) -> Cells:
 def _fix_counts(track: Track, spans: Sequence[Span]) -> tuple[int, float, NDArray[np.bool_]]:
     """Fixes in spans, the longest time without one, and which fixes they are."""
     inside = np.zeros(len(track), dtype=bool)
-    longest_ms = 0.0
+    longest_ms, last_ms = 0.0, track.time_ms[-1] if len(track) else None
     for start_ms, end_ms in spans:
         # The last fix of all ends the tracked time; it counts although spans are half-open.
         here = (track.time_ms >= start_ms) & (
-            (track.time_ms < end_ms) | ((track.time_ms == end_ms) & (end_ms == track.time_ms[-1]))
+            (track.time_ms < end_ms) | ((track.time_ms == end_ms) & (end_ms == last_ms))
         )
         inside |= here
         marks = np.concatenate([[start_ms], track.time_ms[here], [end_ms]])
@@ -241,6 +249,8 @@ class _InZone:
 
 
 def _out_of_reach(animal: _Animal, zone: Zone) -> bool:
+    if len(animal.steps) == 0:
+        return True
     ball_m = zone.shape.rough_ball_m
     if ball_m is None:
         return False

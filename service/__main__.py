@@ -1,0 +1,8 @@
+"""Makes `python -m service` the same as `sojourn`."""
+
+import sys
+
+from service.cli import main
+
+if __name__ == "__main__":
+    sys.exit(main())

@@ -1,0 +1,1 @@
+"""Recomputation: the one place that calls the estimators."""

@@ -1,0 +1,158 @@
+"""Zone use: row by row, and summed up over animals."""
+
+from __future__ import annotations
+
+import time
+from collections.abc import Sequence
+from typing import Annotated, Any
+from urllib.parse import urlencode
+
+from fastapi import APIRouter, Depends, Query, Request
+from sqlalchemy import Connection
+from starlette.responses import Response
+
+from service.cursors import pack_cursor, unpack_cursor
+from service.media_types import CSV, GEOJSON, JSON, negotiated
+from service.principal import Caller
+from service.problems import Problem
+from service.routes.animals import unknown_animal
+from service.routes.context import Site, json_response
+from service.routes.models import SummaryPage, ZoneUsePage
+from service.routes.parameters import MonthRangeParameters, ZoneUseParameters
+from service.routes.waiting import wait_if_preferred
+from service.routes.zones import unknown_zone
+from service.store.animals import get_animal
+from service.store.zone_use_reading import ZoneUseFilter, touched_current, zone_use_page
+from service.store.zones import get_zone
+from service.writers.instants import utc_text
+from service.writers.summary import USING_RULE, summary_csv
+from service.writers.summary_pages import summary_page
+from service.writers.zone_features import ended_feature, feature_collection, zone_feature
+from service.writers.zone_use_csv import zone_use_csv
+from service.writers.zone_use_rows import CAUTIONS, zone_use_row
+
+router = APIRouter(tags=["zone use"], dependencies=[Depends(wait_if_preferred)])
+
+Row = dict[str, Any]
+
+_OFFERED = (JSON, CSV, GEOJSON)
+_OTHER_FORMS: dict[int | str, dict[str, Any]] = {
+    200: {"content": {CSV: {"schema": {"type": "string"}}, GEOJSON: {"schema": {"type": "object"}}}}
+}
+
+
+@router.get("/zone-use", response_model=ZoneUsePage, responses=_OTHER_FORMS)
+def get_zone_use(
+    request: Request, site: Site, caller: Caller, parameters: Annotated[ZoneUseParameters, Query()]
+) -> Response:
+    """Rows by animal, month, zone and version."""
+    media_type = negotiated(_OFFERED, parameters.f, request.headers.get("accept"))
+    key = unpack_cursor(parameters.cursor, str, str, str, int)
+    after = None if key is None else (str(key[0]), str(key[1]), str(key[2]), int(key[3]))
+    with site.store.read() as connection:
+        wanted = _filter(connection, caller.programme, parameters, nonzero=parameters.nonzero)
+        found = zone_use_page(connection, caller.programme, wanted, after, parameters.limit + 1)
+        page = found[: parameters.limit]
+        rows = [zone_use_row(stored, caller.programme) for stored in page]
+        members = _members(connection, caller.programme, wanted, minimum_stay_hours=site.settings.minimum_stay_hours)
+        features = _features_with_rows(connection, caller.programme, rows) if media_type == GEOJSON else []
+    last = page[-1] if len(found) > len(page) else None
+    more = None if last is None else pack_cursor([last.animal, last.month, last.zone, last.zone_version])
+    headers = _link(request, more)
+    if media_type == CSV:
+        return Response(zone_use_csv(rows), media_type=CSV, headers=headers)
+    if media_type == GEOJSON:
+        collection = feature_collection(features, **members, next=more)
+        return json_response(collection, headers=headers, media_type=GEOJSON)
+    return json_response({**members, "rows": rows, "next": more}, headers=headers)
+
+
+@router.get("/zone-use/summary", response_model=SummaryPage, responses=_OTHER_FORMS)
+def get_summary(
+    request: Request, site: Site, caller: Caller, parameters: Annotated[MonthRangeParameters, Query()]
+) -> Response:
+    """Per zone version and month: how many animals were tracked and used it, and means over animals."""
+    media_type = negotiated(_OFFERED, parameters.f, request.headers.get("accept"))
+    key = unpack_cursor(parameters.cursor, str, str, int)
+    after = None if key is None else (str(key[0]), str(key[1]), int(key[2]))
+    with site.store.read() as connection:
+        wanted = _filter(connection, caller.programme, parameters)
+        rows, more_key = summary_page(connection, caller.programme, wanted, after, parameters.limit)
+        members = _members(connection, caller.programme, wanted, using_rule=USING_RULE)
+        features = _flat_features(connection, caller.programme, rows) if media_type == GEOJSON else []
+    more = None if more_key is None else pack_cursor(more_key)
+    headers = _link(request, more)
+    if media_type == CSV:
+        return Response(summary_csv(rows), media_type=CSV, headers=headers)
+    if media_type == GEOJSON:
+        collection = feature_collection(features, **members, next=more)
+        return json_response(collection, headers=headers, media_type=GEOJSON)
+    return json_response({**members, "rows": rows, "next": more}, headers=headers)
+
+
+def _filter(
+    connection: Connection, programme: str, parameters: MonthRangeParameters, *, nonzero: bool = False
+) -> ZoneUseFilter:
+    """What is asked for; unknown names are refused, so that nothing found never hides a misspelling."""
+    if parameters.programme not in (None, programme):
+        detail = f"There is no programme {str(parameters.programme)[:100]!r} here. Yours is {programme!r}."
+        raise Problem(404, "unknown-programme", "There is no such programme", detail)
+    if parameters.animal is not None and get_animal(connection, programme, parameters.animal) is None:
+        raise unknown_animal(parameters.animal)
+    if parameters.zone is not None and not get_zone(connection, programme, parameters.zone):
+        raise unknown_zone(parameters.zone)
+    return ZoneUseFilter(
+        parameters.animal, parameters.zone, parameters.group, parameters.month_from, parameters.month_to, nonzero
+    )
+
+
+def _members(connection: Connection, programme: str, wanted: ZoneUseFilter, **own: float | str) -> dict[str, Any]:
+    """What every answer about zone use says besides its rows."""
+    return {
+        "as_of": utc_text(time.time_ns() // 1_000_000),
+        "current": touched_current(connection, programme, wanted),
+        **own,
+        "cautions": list(CAUTIONS),
+    }
+
+
+def _link(request: Request, cursor: str | None) -> dict[str, str]:
+    """Link header to the next page: a CSV has no other place for it."""
+    if cursor is None:
+        return {}
+    query = urlencode([*((k, v) for k, v in request.query_params.multi_items() if k != "cursor"), ("cursor", cursor)])
+    return {"Link": f'<{request.url.path}?{query}>; rel="next"'}
+
+
+def _features_with_rows(connection: Connection, programme: str, rows: Sequence[Row]) -> list[Row]:
+    """One feature per zone version on the page, its rows in the properties."""
+    rows_of: dict[tuple[str, int], list[Row]] = {}
+    for row in rows:
+        rows_of.setdefault((row["zone"], row["zone_version"]), []).append(row)
+    features = _features(connection, programme, rows)
+    for key, feature in features.items():
+        feature["properties"]["rows"] = rows_of[key]
+    return list(features.values())
+
+
+def _flat_features(connection: Connection, programme: str, rows: Sequence[Row]) -> list[Row]:
+    """One feature per zone version and month, its figures as plain properties, for maps."""
+    features = _features(connection, programme, rows)
+    flat = []
+    for row in rows:
+        feature = features[row["zone"], row["zone_version"]]
+        identifier = f"{feature['id']}/{row['month']}"
+        properties = {"id": identifier, "name": feature["properties"]["name"], **row}
+        flat.append({**feature, "id": identifier, "properties": properties})
+    return flat
+
+
+def _features(connection: Connection, programme: str, rows: Sequence[Row]) -> dict[tuple[str, int], Row]:
+    """Features of the zone versions of rows, by zone and version."""
+    wanted = sorted({(row["zone"], row["zone_version"]) for row in rows})
+    live = {
+        (version.zone, version.version): version
+        for zone in sorted({zone for zone, _ in wanted})
+        for version in get_zone(connection, programme, zone)
+    }
+    return {key: zone_feature(live[key]) if key in live else ended_feature(*key) for key in wanted}

@@ -1,0 +1,1 @@
+"""What is kept: the store behind one door per kind of thing."""

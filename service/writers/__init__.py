@@ -1,0 +1,1 @@
+"""What goes out: rows turned into JSON, GeoJSON and CSV."""
