@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from bisect import bisect_right
 from dataclasses import dataclass, replace
 from functools import cache
 from typing import Any
@@ -72,11 +73,15 @@ class ZoneHistory:
 
     def at(self, commit_no: int) -> tuple[ZoneTimes, ...]:
         """Versions that were live after a commit, by zone and version, each ended where the next begins."""
-        return self._at(max((change for change in self._changes if change <= commit_no), default=0))
+        return self._at(self._change_before(commit_no))
 
-    def in_force(self, commit_no: int, time_ms: int) -> tuple[ZoneTimes, ...]:
-        """Those of them that are in force at an instant."""
-        return self._in_force(self.at(commit_no), time_ms)
+    def in_force(self, commit_no: int, time_ms: int) -> frozenset[int]:
+        """Keys of those of them that are in force at an instant."""
+        return self._in_force(self._change_before(commit_no), time_ms)
+
+    def _change_before(self, commit_no: int) -> int:
+        place = bisect_right(self._changes, commit_no)
+        return self._changes[place - 1] if place else 0
 
     def _versions_at(self, commit_no: int) -> tuple[ZoneTimes, ...]:
         live = [
@@ -91,8 +96,9 @@ class ZoneHistory:
                 begins.setdefault(version.zone, []).append(version.from_ms)
         return tuple(_ended(version, begins.get(version.zone, [])) for version in versions)
 
-    def _in_force_among(self, versions: tuple[ZoneTimes, ...], time_ms: int) -> tuple[ZoneTimes, ...]:
-        return tuple(version for version in versions if version.in_force_at(time_ms, self._owner.time_zone))
+    def _in_force_among(self, change: int, time_ms: int) -> frozenset[int]:
+        versions, time_zone = self._at(change), self._owner.time_zone
+        return frozenset(version.key for version in versions if version.in_force_at(time_ms, time_zone))
 
     def _times(self, row: Row[Any]) -> ZoneTimes:
         from_ms, until_ms = (

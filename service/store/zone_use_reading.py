@@ -78,7 +78,7 @@ def zone_use_page(
     Every animal's rows are those of its latest publication, with the zone versions that it was computed with.
     """
     owner = get_programme(connection, programme)
-    history = ZoneHistory(connection, owner)
+    history = ZoneHistory(connection, owner, wanted.zone)
     page: list[StoredRow] = []
     at_a_time = limit // max(1, len(history.at(owner.zones_revision))) + 1
     for months in _animal_months(connection, owner, wanted, after, at_a_time):
@@ -175,11 +175,9 @@ def _rows_of_month(
         month.longest_gap_hours,
         tuple(json.loads(month.flags)),
     )
-    in_force = {version.key for version in history.in_force(month.published_commit_no, month.tracked_from_ms)}
+    in_force = history.in_force(month.published_commit_no, month.tracked_from_ms)
     outside = facts.outside_row(0)
     for version in history.at(month.published_commit_no):
-        if wanted.zone is not None and version.zone != wanted.zone:
-            continue
         figures = stored.get((month.animal_id, month.month, version.key))
         if figures is None and version.key in in_force:
             figures = outside
