@@ -12,6 +12,7 @@ import numpy as np
 import shapely
 from numpy.typing import NDArray
 from shapely import MultiPolygon, Polygon
+from shapely.errors import GEOSException
 
 from estimators.errors import ZoneGeometryError
 from estimators.frames import earth_centred_m
@@ -78,10 +79,15 @@ class ZoneShape:
             raise ZoneGeometryError("zero_area", "The geometry is empty. Give at least one polygon.", "/coordinates")
         notes: list[str] = []
         polygons: list[Polygon] = []
-        for number, rings in enumerate(parts):
-            pointer = "/coordinates" if kind == "Polygon" else f"/coordinates/{number}"
-            polygons += _read_polygon(rings, pointer, notes)
-        _check_parts_apart(polygons)
+        try:
+            for number, rings in enumerate(parts):
+                pointer = "/coordinates" if kind == "Polygon" else f"/coordinates/{number}"
+                polygons += _read_polygon(rings, pointer, notes)
+            _check_parts_apart(polygons)
+        except GEOSException as fault:
+            # Rings that cross only once they are closed through a pole, or cut, are first seen there.
+            message = f"The rings do not fit together: {str(fault)[:200]} Mend them there and send the zone again."
+            raise ZoneGeometryError("invalid_polygon", message, "/coordinates") from fault
         return cls(MultiPolygon(polygons), edges, tuple(dict.fromkeys(notes)))
 
     @cached_property

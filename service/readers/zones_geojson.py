@@ -7,8 +7,6 @@ from collections.abc import Mapping
 from dataclasses import dataclass
 from typing import Any, Final
 
-from shapely.errors import GEOSException
-
 from estimators import CalendarError, Season, ZoneGeometryError, ZoneShape, local_date_ms
 from service.problems import Problem
 from service.readers.identifiers import identifier_fault
@@ -261,8 +259,4 @@ def _shape(geometry: Any, edges: str, pointer: str, faults: list[Fault]) -> Zone
         return ZoneShape.from_geojson(geometry, "geodesic" if edges == "geodesic" else "straight")
     except ZoneGeometryError as fault:
         faults.append(_fault(fault.code, fault.message, f"{pointer}/geometry{fault.pointer}", fault.place))
-    except GEOSException as fault:
-        # Rings that cross only once they are closed through a pole, or cut, are first seen there.
-        message = f"The rings do not fit together: {str(fault)[:200]} Mend them there and send the zone again."
-        faults.append(_fault("invalid_polygon", message, f"{pointer}/geometry"))
     return None

@@ -58,6 +58,7 @@ def test_hole_around_the_pole():
         ([[[0, 0], [1, float("nan")], [1, 1], [0, 0]]], "bad_position"),
         ([[[0, 0], [1, 1], [0, 0]]], "too_few_positions"),
         ([], "too_few_positions"),
+        ([[[0, 1], [1, 0], [-359, 0], [0, 0], [0, 1]], [[0, 0], [0, 1], [1, 0], [0, 0]]], "invalid_polygon"),
     ],
 )
 def test_refusals(rings, code):
