@@ -23,6 +23,7 @@ from estimators.location_error import (
     covariance_from_ellipse,
     covariance_from_radius,
     covariance_from_satellites,
+    usable_covariance,
 )
 from estimators.months import MonthSpan, Season, Span, join_spans, local_date_ms, month_spans, reporting_zone
 from estimators.polygon_mass import gaussian_mass_in_polygon
@@ -66,4 +67,5 @@ __all__ = [
     "local_date_ms",
     "month_spans",
     "reporting_zone",
+    "usable_covariance",
 ]

@@ -37,6 +37,9 @@ axis): from a tortoise to a bird on passage. It is proper, so that two fixes alr
 wide that a few dozen fixes outweigh it.
 """
 
+NARROWEST_RATIO: Final = 1e-7
+"""An error ellipse narrower than this, minor over major axis, is refused: the smoother would lose its digits."""
+
 INTEGRATION_LIMIT: Final = 9e-7
 """Largest error that the time integral of a zone mass may have, as a share of the covered time."""
 
@@ -55,7 +58,10 @@ LONGEST_STEP_M: Final = 100_000.0
 """A step between fixes longer than this is cut into parts along its geodesic, each with its own frame."""
 
 WIDE_SPREAD_SD_M: Final = 50_000.0
-"""Above this standard deviation the plane frame of a step bends masses by more than about 1e-5; flagged."""
+"""Spread of a path, as standard deviation or distance from the straight path, above which a row is flagged.
+
+Further out the plane frame of a step bends masses by more than about 1e-5.
+"""
 
 TRIVIAL_NUMERICAL_ERROR: Final = 2e-8
 """Numerical error of a mass that is 0 or 1 because no edge is in reach."""

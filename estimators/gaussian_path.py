@@ -116,6 +116,12 @@ class GaussianPath:
         length_m = np.maximum(np.hypot(*self.start_m.T), np.hypot(*self.end_m.T))
         return np.asarray((EDGE_REACH_SD * self.largest_sd_m() + length_m) * 1.001 + 1.0)
 
+    def largest_shift_m(self) -> FloatArray:
+        """Distance of the mean from the straight path between the fixes, shape (n,), the larger of the part's ends."""
+        parts = self.steps.parts
+        shifts = (self.start_m - parts.start_m, self.end_m - parts.end_m)
+        return np.asarray(np.maximum(*(np.hypot(shift[:, 0], shift[:, 1]) for shift in shifts)))
+
     def block_balls_m(self) -> FloatArray:
         """Balls around consecutive parts and their reach, shape (n_blocks, 4), centre and radius, metres."""
         if len(self.steps) == 0:

@@ -14,6 +14,7 @@ from typing import Final
 import numpy as np
 from numpy.typing import NDArray
 
+from estimators.defaults import NARROWEST_RATIO
 from estimators.errors import LocationErrorStatementError
 
 FloatArray = NDArray[np.float64]
@@ -186,6 +187,26 @@ def covariance_from_satellites(satellites: NDArray[np.int64]) -> FloatArray:
         )
     radius_m = np.array([SATELLITES_RADIUS95_M[min(int(count), 10)] for count in counts], dtype=np.float64)
     return covariance_from_radius("radius95_m", radius_m)
+
+
+def usable_covariance(covariance_m2: FloatArray) -> NDArray[np.bool_]:
+    """Whether covariances are finite, positive definite and not narrower than `NARROWEST_RATIO`.
+
+    Parameters
+    ----------
+    covariance_m2 : ndarray, shape (n, 3), [east variance, covariance, north variance], square metres
+
+    Returns
+    -------
+    ndarray of bool, shape (n,)
+    """
+    east, cross, north = covariance_m2.T
+    # NaN compares as false.
+    return np.asarray(
+        (east > 0.0)
+        & (east * north - cross**2 > NARROWEST_RATIO**2 * (east + north) ** 2)
+        & np.all(np.isfinite(covariance_m2), axis=1)
+    )
 
 
 def _check_positive(name: str, values: FloatArray) -> None:

@@ -27,6 +27,7 @@ A mass changes with ln σ² by second differences below about 0.1, so one node e
 at a moment and far less over a month.
 """
 _CUT_OFF: Final = 18.0
+_MOST_NODES: Final = 2000
 _LOG_MEDIAN: Final = math.log(MOVEMENT_VARIANCE_PRIOR_MEDIAN_M2_PER_S)
 
 
@@ -104,13 +105,11 @@ def _posterior_grid(log_posterior: LogLikelihood, mode: float, sd: float) -> tup
     top = log_posterior(mode)
     places, heights = [mode], [top]
     for direction in (-1.0, 1.0):
-        place = mode
-        while True:
-            place += direction * step
-            height = log_posterior(place)
-            if height < top - _CUT_OFF:
+        for count in range(1, _MOST_NODES):
+            height = log_posterior(mode + direction * count * step)
+            if not height >= top - _CUT_OFF:
                 break
-            places.append(place)
+            places.append(mode + direction * count * step)
             heights.append(height)
     order = np.argsort(places)
     grid, logs = np.array(places)[order], np.array(heights)[order]

@@ -26,17 +26,18 @@ from estimators.errors import EstimatorError
 FloatArray = NDArray[np.float64]
 
 _RULES: Final = np.array([2, 3, 4, 6, 8])
-_LONGEST_FOR_RULE: Final = np.array([0.05, 0.25, 0.6, 1.4, 2.6])
+_LONGEST_FOR_RULE: Final = np.array([0.03, 0.22, 0.6, 1.4, 2.6])
 _X, _W = np.zeros((5, 8)), np.zeros((5, 8))
 for _row, _count in enumerate(_RULES):
     _X[_row, :_count], _W[_row, :_count] = np.polynomial.legendre.leggauss(_count)
-EDGE_ERROR: Final = 2e-10
-"""Largest error of one edge's share of the mass.
+EDGE_ERROR_PER_SD: Final = 2.5e-10
+EDGE_ERROR: Final = 1e-12
+"""Largest error of one edge's share of the mass: so much per standard deviation of its length, and so much besides.
 
-The integrand g(r²/2)/2 has derivatives in u of order 2n below √((2n)!)/(2(n + 1)), so an n-point Gauss rule over a
-length L errs by at most L^(2n+1) (n!)⁴ / ((2n + 1) (2n)!³) times that: below 1.4e-10 for each pair of
-`_RULES` and `_LONGEST_FOR_RULE`. Times h/2π ≤ 6/2π, and at most five pieces an edge, of which only those within
-reach of h² + u² ≤ 6² count; the table and the arctangent add less than 2e-11.
+The integrand g(r²/2)/2 has derivatives in u of order 2n below 1.09 √((2n)!)/(2(n + 1)), so an n-point Gauss rule over
+a length L errs by at most L^(2n+1) (n!)⁴ / ((2n + 1) (2n)!³) times that, and the mass by h/2π ≤ 6/2π times as much:
+below 2e-10 L for each of `_RULES` up to its `_LONGEST_FOR_RULE`. The table adds less than 2e-11 L; the arctangent and
+rounding are the rest.
 """
 
 # g(q) = (1 - exp(-q))/q = ∫₀¹ exp(-qs) ds by its Taylor polynomials around the middles of bins of width 1/4.

@@ -6,7 +6,7 @@ A path on an edge belongs to the zone on one fixed side, the same for both zones
 from __future__ import annotations
 
 import math
-from typing import Any
+from typing import Any, Final
 
 import numpy as np
 from numpy.typing import NDArray
@@ -19,6 +19,8 @@ from estimators.zone_edges import ZoneEdges
 from estimators.zone_mass import Cells
 
 FloatArray = NDArray[np.float64]
+_SIDE_M: Final = 1e-6
+"""A path on an edge, to within rounding, is judged this far to the east and a little to the north of it."""
 
 
 @compiled()
@@ -70,7 +72,7 @@ def _inside_stretches(
             if hi <= lo:
                 continue
             share = 0.5 * (lo + hi)
-            px, py = starts[k, 0] + share * dx, starts[k, 1] + share * dy
+            px, py = starts[k, 0] + share * dx + _SIDE_M, starts[k, 1] + share * dy + 0.7 * _SIDE_M
             winding = winding_number(out, 0, near, px, py)
             winding += winding_number(out, len(out) - far, len(out), px, py)
             if winding > 0:

@@ -9,6 +9,7 @@ from numpy.typing import NDArray
 
 from estimators.errors import TrackError
 from estimators.frames import WGS84
+from estimators.location_error import usable_covariance
 
 FloatArray = NDArray[np.float64]
 
@@ -54,7 +55,7 @@ class Track:
         Raises
         ------
         TrackError
-            A value is not finite, a latitude is beyond a pole, or a covariance is not positive definite.
+            A value is not finite, a latitude is beyond a pole, or a covariance is not positive definite or too narrow.
 
         Notes
         -----
@@ -83,9 +84,11 @@ class Track:
 def _check_finite(lon: FloatArray, lat: FloatArray, cov: FloatArray) -> None:
     if not (np.all(np.isfinite(lon)) and np.all(np.abs(lat) <= 90.0)):
         raise TrackError("bad_position", "A fix has no place on Earth. Give finite degrees, latitude within ±90.")
-    determinant = cov[:, 0] * cov[:, 2] - cov[:, 1] ** 2
-    if not np.all(np.isfinite(cov)) or not np.all((cov[:, 0] > 0.0) & (determinant > 0.0)):
-        raise TrackError("bad_error", "A fix's error is not positive definite. State a positive error.")
+    if not np.all(usable_covariance(cov)):
+        raise TrackError(
+            "bad_error",
+            "A fix's error is not positive, or its ellipse is too narrow to be computed with. State it as a radius.",
+        )
 
 
 def _merge_simultaneous(track: Track) -> Track:

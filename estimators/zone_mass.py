@@ -26,7 +26,7 @@ from estimators.defaults import (
 )
 from estimators.gaussian_path import GaussianPath
 from estimators.near_edges import collect_edges, place_in_space_m
-from estimators.polygon_mass import EDGE_ERROR, mass_of_edges, winding_number
+from estimators.polygon_mass import EDGE_ERROR, EDGE_ERROR_PER_SD, mass_of_edges, winding_number
 from estimators.zone_edges import ZoneEdges
 
 FloatArray = NDArray[np.float64]
@@ -168,6 +168,16 @@ def _panel_mass(
 
 
 @compiled()
+def _edges_error(out: Any, near: int, least_sd_m: float) -> float:  # pragma: no cover - compiled
+    """Bound on the error of all near edges' shares of the mass; no edge counts beyond its chord within reach."""
+    length = 0.0
+    for k in range(near):
+        dx, dy = out[k, 2] - out[k, 0], out[k, 3] - out[k, 1]
+        length += min(math.sqrt(dx * dx + dy * dy) / least_sd_m, 2.0 * EDGE_REACH_SD)
+    return length * EDGE_ERROR_PER_SD + near * EDGE_ERROR
+
+
+@compiled()
 def _level_of_detail(edges: Any, least_sd_m: float) -> int:  # pragma: no cover - compiled
     """Coarsest level of the boundary that a path of at least this standard deviation may be held against."""
     level, deviation_m, top = 0, EDGE_DEVIATION_FINEST_M, len(edges.level_first_root) - 2
@@ -211,7 +221,7 @@ def _cell_mass(
             depth += 2
             continue
         rule = max(rule, 0)
-        error += width * (bound + near * EDGE_ERROR)
+        error += width * (bound + _edges_error(out, near, least))
         pairs += near * _COUNTS[rule]
         total += width * _panel_mass(out, near, far, rule, start, end, p, lo, hi)
     return total, error, pairs

@@ -167,14 +167,14 @@ def _cells(steps: CoveredSteps, spans: Sequence[Sequence[Span]]) -> Cells:
     return Cells(part.astype(np.int64), of.astype(np.int64), low, high, duration)
 
 
-def _fix_counts(track: Track, spans: Sequence[Span]) -> tuple[int, float, NDArray[np.bool_]]:
+def _fix_counts(track: Track, spans: Sequence[Span], closing_ms: int) -> tuple[int, float, NDArray[np.bool_]]:
     """Fixes in spans, the longest time without one, and which fixes they are."""
     inside = np.zeros(len(track), dtype=bool)
-    longest_ms, last_ms = 0.0, track.time_ms[-1] if len(track) else None
+    longest_ms = 0.0
     for start_ms, end_ms in spans:
-        # The last fix of all ends the tracked time; it counts although spans are half-open.
+        # A last fix ends the tracked time; it counts although spans are half-open.
         here = (track.time_ms >= start_ms) & (
-            (track.time_ms < end_ms) | ((track.time_ms == end_ms) & (end_ms == last_ms))
+            (track.time_ms < end_ms) | ((track.time_ms == end_ms) & (end_ms == closing_ms))
         )
         inside |= here
         marks = np.concatenate([[start_ms], track.time_ms[here], [end_ms]])
@@ -191,10 +191,11 @@ def _month_facts(animal: _Animal, fit: VariancePosterior) -> list[MonthFacts]:
     covered = np.bincount(cells.period, weights=cells.duration_ms, minlength=len(animal.months))
     widest = np.zeros(len(animal.months))
     for path in animal.paths:
-        np.maximum.at(widest, cells.period, path.largest_sd_m()[cells.part])
+        spread_m = np.maximum(path.largest_sd_m(), path.largest_shift_m())
+        np.maximum.at(widest, cells.period, spread_m[cells.part])
     facts = []
     for k, month in enumerate(animal.months):
-        fixes, longest_ms, inside = _fix_counts(animal.track, animal.tracked[k])
+        fixes, longest_ms, inside = _fix_counts(animal.track, animal.tracked[k], animal.tracked[-1][-1][1])
         flags = {
             "assumed_error": bool(np.any(animal.track.assumed_error[inside])),
             "zero_position": bool(np.any(animal.track.zero_position[inside])),
@@ -285,7 +286,7 @@ def _row(
     inside_ms: float,
     visits: int,
 ) -> ZoneMonth:
-    fixes, longest_ms, _ = _fix_counts(animal.track, span)
+    fixes, longest_ms, _ = _fix_counts(animal.track, span, animal.tracked[-1][-1][1])
     known = covered_ms > 0.0
     return ZoneMonth(
         index,

@@ -16,6 +16,7 @@ from estimators import (
     covariance_from_ellipse,
     covariance_from_radius,
     covariance_from_satellites,
+    usable_covariance,
 )
 from service.readers.coding import coded
 from service.readers.faults import Faults
@@ -157,8 +158,7 @@ def _whole_numbers(values: FloatArray) -> NDArray[np.int64]:
 
 def _check_usable(kind: str, statements: list[Statement], covariance_m2: FloatArray) -> None:
     """Refuse errors that leave no usable covariance: as large as the Earth, or lost in rounding."""
-    east, cross, north = covariance_m2.T
-    largest = np.maximum(east, north) <= LARGEST_ERROR_SD_M**2
-    usable = largest & (east > 0.0) & (east * north - cross**2 > 0.0)
+    largest = np.maximum(covariance_m2[:, 0], covariance_m2[:, 2]) <= LARGEST_ERROR_SD_M**2
+    usable = largest & usable_covariance(covariance_m2)
     if not np.all(usable):
         raise _out_of_range(kind, statements[int(np.argmin(usable))])

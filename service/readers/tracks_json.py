@@ -2,9 +2,10 @@
 
 from __future__ import annotations
 
+import decimal
 from collections.abc import Iterator
 from itertools import islice
-from typing import Any, BinaryIO
+from typing import Any, BinaryIO, Final
 from zoneinfo import ZoneInfo
 
 import ijson
@@ -15,8 +16,12 @@ from service.readers.faults import Faults
 from service.readers.fix_columns import KNOWN_COLUMNS, checked_chunk, no_rows_problem, time_zone_of
 from service.readers.fix_rows import CHUNK_ROWS, FixChunk, ReadOutcome
 
+LONGEST_NUMBER: Final = 640
+"""Digits in a row that a body may have: Python reads integers of that length under any setting."""
+
 _BOM = b"\xef\xbb\xbf"
 _PEEKED_BYTES = 65536
+_DIGITS_AS_ZEROS = bytes.maketrans(b"123456789", b"000000000")
 
 
 def read_tracks_json(
@@ -40,14 +45,31 @@ def read_tracks_json(
     """
     zone = time_zone_of(time_zone)
     _find_array(stream)
-    items = ijson.items(stream, "item")
+    items = ijson.items(_ShortNumbers(stream), "item")
     try:
         while rows := list(islice(items, CHUNK_ROWS)):
             yield _chunk(rows, received_at_ms, zone, outcome)
     except ijson.JSONError as fault:
         raise _json_problem(str(fault), outcome.rows) from fault
+    except decimal.InvalidOperation as fault:
+        raise _json_problem("the exponent of a number is too large", outcome.rows) from fault
     if outcome.rows == 0:
         raise no_rows_problem()
+
+
+class _ShortNumbers:
+    """A stream that refuses numbers too long for Python's integers: the compiled parser would end the process."""
+
+    def __init__(self, stream: BinaryIO) -> None:
+        self._stream, self._before = stream, b""
+
+    def read(self, size: int) -> bytes:
+        block = self._stream.read(size)
+        signs = self._before + block.translate(_DIGITS_AS_ZEROS)
+        if b"0" * (LONGEST_NUMBER + 1) in signs:
+            raise ijson.JSONError(f"there are more than {LONGEST_NUMBER} digits in a row")
+        self._before = signs[-LONGEST_NUMBER:]
+        return block
 
 
 def _find_array(stream: BinaryIO) -> None:
