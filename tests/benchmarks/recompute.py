@@ -5,6 +5,7 @@ import statistics
 import tempfile
 import threading
 import time
+from collections.abc import Iterator
 from pathlib import Path
 
 from estimators import Zone
@@ -15,9 +16,10 @@ from tests.running_server import CSV, GEOJSON, RunningServer
 ANIMALS, FIXES_EACH, ZONES = 100, 8_760, 20
 
 
-def rows() -> list[Row]:
+def rows() -> Iterator[Row]:
     """All figures of this file."""
-    return [*_stored_tracks_to_rows(), *_one_new_fix()]
+    yield from _one_new_fix()
+    yield from _stored_tracks_to_rows()
 
 
 def _zones() -> dict[str, Zone]:

@@ -6,7 +6,7 @@ import numpy as np
 
 from estimators import Track, Zone, ZoneShape
 
-START_MS = 1_767_225_600_000
+START_MS = 1_704_067_200_000
 SD_M = 20.0
 STEP_SD_M = 350.0
 METRES_PER_DEGREE = 111_200.0

@@ -21,7 +21,9 @@ from estimators.frames import WGS84, earth_centred_m, east_north_axes, plane_coo
     ],
 )
 def test_published_lines(line, metres):
-    """C77, C78 (Karney's test set, doi:10.5281/zenodo.32156), C80, C81 (from memory), C82."""
+    """Degrees of the meridian and of the equator, the quarter meridian (upper limit in Karney's test set,
+    doi:10.5281/zenodo.32156), a near-antipodal line where iteration fails, New York to London (from memory), across
+    180° and over the pole; derived where nothing is named."""
     assert WGS84.inv(*line)[2] == pytest.approx(metres, abs=1e-3)
 
 

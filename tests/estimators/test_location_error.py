@@ -19,14 +19,14 @@ from estimators import (
     [("sd_m", 1.0), ("radius50_m", 1.177410), ("radius68_m", 1.509592), ("radius95_m", 2.447747)],
 )
 def test_radius_over_standard_deviation(kind, ratio):
-    """R50, R68, R95 of a circular normal (C1, C2, C3)."""
+    """R50, R68, R95 of a circular normal (derived: √(-2 ln(1 - p)); 1.177 in Bowditch's tables)."""
     found = covariance_from_radius(kind, np.array([100.0 * ratio]))
     assert np.sqrt(found[0, 0]) == pytest.approx(100.0, abs=1e-3)
     assert found[0, 1] == 0.0
 
 
 def test_argos_ellipse():
-    """M = 1000, m = 400, c = 30 degrees (C65; convention of McClintock et al. 2015, from memory)."""
+    """M = 1000, m = 400, c = 30 degrees (derived; convention of McClintock et al. 2015, from memory)."""
     east, cross, north = covariance_from_ellipse(np.array([1000.0]), np.array([400.0]), np.array([30.0]))[0]
     assert (east, north) == (pytest.approx(185000.0), pytest.approx(395000.0))
     assert cross == pytest.approx(181865.33, abs=0.01)
@@ -37,7 +37,7 @@ def test_argos_ellipse():
     ("name", "sd_km"), [("3", 0.325), ("2", 0.669), ("1", 0.795), ("0", 2.769), ("A", 4.100), ("B", 6.810)]
 )
 def test_argos_classes(name, sd_km):
-    """Per-axis standard deviations from the 68 % radii of Costa et al. 2010 (C66)."""
+    """Per-axis standard deviations from the 68 % radii of Costa et al. 2010 (abstract)."""
     assert math.sqrt(covariance_from_argos_class([name])[0, 0]) / 1000 == pytest.approx(sd_km, abs=6e-4)
 
 

@@ -19,7 +19,7 @@ DAY_MS = 86_400_000
     ],
 )
 def test_length_of_months(first, last, seconds):
-    """Calendar (C87)."""
+    """31 days, February of a leap year and of a common one (the calendar)."""
     spans = month_spans(local_date_ms(first, "UTC"), local_date_ms(last, "UTC"), "UTC")
     assert [span.month for span in spans] == [first[:7]]
     assert spans[0].end_ms - spans[0].start_ms == seconds * 1000

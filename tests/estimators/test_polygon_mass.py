@@ -28,13 +28,13 @@ def regular(n, apothem):
     ("n", "expected"), [(3, 0.535381), (4, 0.466065), (6, 0.423153), (12, 0.400518), (4000, 0.393469)]
 )
 def test_regular_polygons_have_the_mass_of_owens_t(n, expected):
-    """1 - 2n T(h, tan(pi/n)) (C18; Owen 1956); many corners approach the disc, 1 - exp(-1/2) (C4)."""
+    """1 - 2n T(h, tan(pi/n)) (Owen 1956); many corners approach the disc, 1 - exp(-1/2)."""
     assert mass(regular(n, 1.0)) == pytest.approx(expected, abs=1e-6)
     assert mass(regular(n, 1.0)) == pytest.approx(1.0 - 2 * n * owens_t(1.0, math.tan(math.pi / n)), abs=2e-8)
 
 
 def test_triangle_and_l_shape():
-    """Triangle (C19) and non-convex L (C20), each derived by two routes."""
+    """Triangle and non-convex L, each derived by two routes."""
     assert mass([(1, 0), (3, 1), (0, 2)]) == pytest.approx(0.100836742408, abs=1e-9)
     shape = [(-1, -1), (2, -1), (2, 0), (0, 0), (0, 2), (-1, 2)]
     assert mass(shape) == pytest.approx(0.442329705711, abs=1e-9)
@@ -42,21 +42,21 @@ def test_triangle_and_l_shape():
 
 @pytest.mark.parametrize(("half", "expected"), [(1, 0.466065), (2, 0.911070), (3, 0.994608)])
 def test_centred_squares(half, expected):
-    """(2Phi(a) - 1)^2 (C11)."""
+    """(2Phi(a) - 1)^2 (derived)."""
     square = [(-half, -half), (half, -half), (half, half), (-half, half)]
     assert mass(square) == pytest.approx(expected, abs=1e-6)
 
 
 @pytest.mark.parametrize(("correlation", "expected"), [(0, 0.25), (0.5, 1 / 3), (-0.5, 1 / 6), (0.9, 0.428217)])
 def test_quadrant_of_a_correlated_normal(correlation, expected):
-    """1/4 + asin(rho)/2pi (C10; Sheppard 1899)."""
+    """1/4 + asin(rho)/2pi (Sheppard 1899)."""
     covariance = np.array([[[1.0, correlation], [correlation, 1.0]]])
     assert mass([(0, 0), (FAR, 0), (FAR, FAR), (0, FAR)], covariance=covariance) == pytest.approx(expected, abs=1e-6)
 
 
 @pytest.mark.parametrize(("distance", "expected"), [(1, 0.841345), (1.96, 0.975002), (-2, 0.022750)])
 def test_half_planes(distance, expected):
-    """Phi(d) (C9; tables of the normal distribution)."""
+    """Phi(d) (tables of the normal distribution)."""
     plane = [(-FAR, -FAR), (FAR, -FAR), (FAR, distance), (-FAR, distance)]
     assert mass(plane) == pytest.approx(expected, abs=1e-6)
     assert mass(plane) == pytest.approx(float(ndtr(distance)), abs=2e-9)
@@ -66,14 +66,14 @@ def test_half_planes(distance, expected):
     ("offset", "radius", "expected"), [(1, 1, 0.267120), (2, 1, 0.081892), (1, 2, 0.730988), (3, 3, 0.432520)]
 )
 def test_offset_discs(offset, radius, expected):
-    """Noncentral chi-square with two degrees of freedom (C12), a disc drawn with 4,000 corners."""
+    """Noncentral chi-square with two degrees of freedom (tables), a disc drawn with 4,000 corners."""
     found = mass(regular(4000, radius), mean=(offset, 0.0))
     assert found == pytest.approx(expected, abs=1e-6)
     assert found == pytest.approx(ncx2.cdf(radius**2, 2, offset**2), abs=1e-6)
 
 
 def test_union_of_half_planes_is_not_counted_twice():
-    """x > 0 or y > 0 holds three quarters (C21)."""
+    """x > 0 or y > 0 holds three quarters (derived)."""
     shape = [(0, -FAR), (FAR, -FAR), (FAR, FAR), (-FAR, FAR), (-FAR, 0), (0, 0)]
     assert mass(shape) == pytest.approx(0.75, abs=1e-9)
 

@@ -23,7 +23,7 @@ def eastward_track(places_m, times_s, sd_m):
 
 
 def test_three_fixes_smoothed():
-    """q = R = 1, y = (0, 3, 0): means, variances, lag-one covariance (C27)."""
+    """q = R = 1, y = (0, 3, 0): means, variances, lag-one covariance (derived by hand)."""
     track = eastward_track([0, 3, 0], [0, 1, 2], 1.0)
     found = RandomWalk(track, HOUR_MS).marginals(1.0)
     assert found.mean_m[:, 0] + np.array([0, 3, 0]) == pytest.approx([0.75, 1.5, 0.75], abs=1e-6)
@@ -32,7 +32,7 @@ def test_three_fixes_smoothed():
 
 
 def test_likelihood_of_three_fixes():
-    """Log-likelihood of the differences (C28); the second axis adds that of no movement."""
+    """Log-likelihood of the differences (derived by hand); the second axis adds that of no movement."""
     track = eastward_track([0, 3, 0], [0, 1, 2], 1.0)
     covariance = np.array([[3.0, -1.0], [-1.0, 3.0]])
     still = multivariate_normal.logpdf([0.0, 0.0], cov=covariance)
@@ -40,7 +40,7 @@ def test_likelihood_of_three_fixes():
 
 
 def test_between_fixes():
-    """Mean and variance at t = 0.5 (C29); the independent bridge puts 0.75."""
+    """Mean and variance at t = 0.5 (derived by hand); the independent bridge puts 0.75."""
     track = eastward_track([0, 3, 0], [0, 1, 2], 1.0)
     steps = covered_steps(track, HOUR_MS)
     walk = path_between_fixes(track, steps, RandomWalk(track, HOUR_MS).marginals(1.0), 1.0, 1.0)
@@ -52,7 +52,7 @@ def test_between_fixes():
 
 @pytest.mark.parametrize(("ratio", "share"), [(1.0, 0.447214), (0.1, 0.156174), (10.0, 0.845154)])
 def test_steady_state(ratio, share):
-    """Smoothed variance over R far from the ends: q/sqrt(q^2 + 4q) (C30)."""
+    """Smoothed variance over R far from the ends: q/sqrt(q^2 + 4q) (derived)."""
     track = eastward_track(np.zeros(201), np.arange(201), 1.0)
     assert RandomWalk(track, HOUR_MS).marginals(ratio).covariance_m2[100, 0, 0] == pytest.approx(share, abs=1e-6)
 
@@ -87,7 +87,7 @@ def test_smoother_against_a_dense_gaussian():
 
 
 def test_bridge_variance_with_and_without_the_left_out_error():
-    """Equal steps of 60 min, residual 100 m, error 20 m: 146.667 m²/min with the left-out fix's error (C24, C26)."""
+    """Equal steps of 60 min, residual 100 m, error 20 m: 146.667 m²/min with the left-out fix's error (derived)."""
     track = eastward_track([0, 100, 0, 100, 0], np.arange(5) * 3600.0, 20.0)
     bridge = BrownianBridge(track, 10 * HOUR_MS)
     variances = np.linspace(1.0, 3.0, 20001)
