@@ -28,7 +28,7 @@ def test_fifty_thousand_vertices_within_an_argos_error(sd_m):
 
 
 def test_turning_an_animal_that_stays_on_a_parallel():
-    """The edge along 60° N runs through the place, its error 5 m; turned by up to 0.003°, no mass changes by over 1e-6."""
+    """The edge along 60° N runs through the place, its error 5 m; turned by up to 0.003°, no mass changes."""
     masses = [
         only_row(
             track_of([10 + turn] * 3, [60.0] * 3, 5.0, step_ms=60_000), zone_of(corners(9 + turn, 60, 11 + turn, 61))
