@@ -6,7 +6,7 @@ import re
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field
 from functools import cached_property
-from typing import Any, Literal
+from typing import Any, Final, Literal
 
 import numpy as np
 import shapely
@@ -23,6 +23,8 @@ from estimators.zone_rings import ReadRing, read_ring
 
 FloatArray = NDArray[np.float64]
 Edges = Literal["straight", "geodesic"]
+LEAST_AREA_DEG2: Final = 1e-11
+"""Smallest area that is told from a line, square degrees: about a tenth of a square metre at the equator."""
 
 _PLACE = re.compile(r"(.*?)\s*\[([-+\d.eE]+) ([-+\d.eE]+)\]")
 _INVALID_CODES = {
@@ -228,10 +230,10 @@ def _checked(ring: ReadRing, pointer: str) -> Polygon:
 
 def _check_valid(polygon: Polygon, pointer: str) -> None:
     flat = Polygon(polygon.exterior)
-    if flat.convex_hull.area < 1e-15 or (polygon.is_valid and polygon.area < 1e-15):
+    if flat.convex_hull.area < LEAST_AREA_DEG2 or (polygon.is_valid and polygon.area < LEAST_AREA_DEG2):
         raise ZoneGeometryError(
             "zero_area",
-            "The ring encloses no area: its positions lie on one line. Check the positions.",
+            "The ring encloses no area, or less than a tenth of a square metre. Check the positions.",
             pointer,
         )
     if polygon.is_valid:
