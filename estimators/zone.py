@@ -23,8 +23,8 @@ from estimators.zone_rings import ReadRing, read_ring
 
 FloatArray = NDArray[np.float64]
 Edges = Literal["straight", "geodesic"]
-LEAST_AREA_DEG2: Final = 1e-11
-"""Smallest area that is told from a line, square degrees: about a tenth of a square metre at the equator."""
+LEAST_AREA_DEG2: Final = 1e-15
+"""Smallest area that is told from a line, square degrees: about a tenth of a square centimetre at the equator."""
 
 _PLACE = re.compile(r"(.*?)\s*\[([-+\d.eE]+) ([-+\d.eE]+)\]")
 _INVALID_CODES = {
@@ -109,11 +109,13 @@ class ZoneShape:
         return [round(value, 6) for value in (west, south, east, north)]
 
     def to_geojson(self) -> dict[str, Any]:
-        """MultiPolygon by RFC 7946: right-hand rule, cut at ±180°, six decimals."""
+        """MultiPolygon by RFC 7946: right-hand rule, cut at ±180°, six decimals; nine where that is too coarse."""
         rounded = []
+        west, south, east, north = self.polygon.bounds
+        decimals = 6 if min(east - west, north - south) > 1e-3 else 9
         for part in self.cut_polygon.geoms:
             rings = [
-                [[round(float(x), 6), round(float(y), 6)] for x, y in ring.coords]
+                [[round(float(x), decimals), round(float(y), decimals)] for x, y in ring.coords]
                 for ring in (part.exterior, *part.interiors)
             ]
             rounded.append(rings)
@@ -233,7 +235,7 @@ def _check_valid(polygon: Polygon, pointer: str) -> None:
     if flat.convex_hull.area < LEAST_AREA_DEG2 or (polygon.is_valid and polygon.area < LEAST_AREA_DEG2):
         raise ZoneGeometryError(
             "zero_area",
-            "The ring encloses no area, or less than a tenth of a square metre. Check the positions.",
+            "The ring encloses no area, or less than a tenth of a square centimetre. Check the positions.",
             pointer,
         )
     if polygon.is_valid:

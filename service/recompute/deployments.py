@@ -19,6 +19,7 @@ def tracked_time(
     tag_names: tuple[str, ...],
     time_ms: NDArray[np.int64],
     time_zone: str,
+    known_until_ms: int,
 ) -> tuple[list[Span], NDArray[np.bool_], bool]:
     """Tracked time of an animal.
 
@@ -30,6 +31,7 @@ def tracked_time(
     tag_names : tuple of str
     time_ms : ndarray of int64, shape (n,)
     time_zone : str, IANA name, for dates
+    known_until_ms : int, when the animal was last told of; a deployment that goes on later is tracked until then
 
     Returns
     -------
@@ -57,6 +59,7 @@ def tracked_time(
         if stated.get("end") is not None:
             end_ms = local_date_ms(stated["end"], time_zone)
             within &= time_ms < end_ms
+            end_ms = min(end_ms, known_until_ms)
         else:
             end_ms = int(time_ms[within].max(initial=start_ms))
         counted |= within

@@ -16,7 +16,7 @@ from service.recompute.task_reading import Task, TaskReader
 from service.recompute.worker_pool import WorkerPool
 from service.settings import Settings
 from service.store.database import Store
-from service.store.publications import ComputedAnimal, publish
+from service.store.publications import publish
 from service.store.staleness import StaleAnimal, record_failure, stale_animals
 
 LOOK_AGAIN_S = 1.0
@@ -112,20 +112,8 @@ class Reconciler:
             code = fault.code if isinstance(fault, EstimatorError) else "internal_error"
             self._note_failure(task, code, f"{fault}" if isinstance(fault, EstimatorError) else repr(fault))
             return
-        result = future.result()
-        computed = ComputedAnimal(
-            task.animal.animal_id,
-            task.snapshot_commit_no,
-            result.estimator,
-            result.parameters,
-            result.months,
-            result.rows,
-            task.zone_keys,
-            result.track_digest,
-            result.digest,
-        )
         with self._store.write("publication") as tx:
-            publish(tx, computed)
+            publish(tx, task.to_publish(future.result()))
 
     def _recover(self, broken: list[_Running]) -> None:
         """Make the pool anew after a worker was killed; each task that it may have been runs again alone."""

@@ -78,6 +78,7 @@ class AnimalInput:
     options : ZoneUseOptions
         Where the animal states no estimator and no longest bridged gap.
     zones : tuple of ZoneInput
+    known_until_ms : int, when the animal was last told of; tracked time never reaches beyond
     fitted : Fitted or None
     """
 
@@ -91,6 +92,7 @@ class AnimalInput:
     default_error_sd_m: float
     options: ZoneUseOptions
     zones: tuple[ZoneInput, ...]
+    known_until_ms: int
     fitted: Fitted | None = None
 
 
@@ -125,7 +127,7 @@ def compute_animal(animal: AnimalInput) -> AnimalResult:
     """
     options = _options(animal)
     spans, counted, implied = tracked_time(
-        animal.attributes, animal.tag, animal.tag_names, animal.time_ms, options.time_zone
+        animal.attributes, animal.tag, animal.tag_names, animal.time_ms, options.time_zone, animal.known_until_ms
     )
     covariance, assumed = _errors(animal, counted)
     fixes = (animal.time_ms[counted], animal.lon_deg[counted], animal.lat_deg[counted], covariance, assumed)

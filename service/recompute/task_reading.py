@@ -8,12 +8,13 @@ from dataclasses import dataclass
 from sqlalchemy import Connection, select
 
 from estimators import ESTIMATES_VERSION, ZoneUseOptions
-from service.recompute.task import AnimalInput, Fitted, ZoneInput
+from service.recompute.task import AnimalInput, AnimalResult, Fitted, ZoneInput
 from service.store import schema
 from service.store.animals import current_attributes
 from service.store.database import last_commit_no
 from service.store.fixes import read_fixes
 from service.store.programmes import ProgrammeRecord, get_programme
+from service.store.publications import ComputedAnimal
 from service.store.staleness import StaleAnimal
 from service.store.zone_history import ZoneHistory
 
@@ -34,6 +35,20 @@ class Task:
     snapshot_commit_no: int
     sent: AnimalInput
     zone_keys: tuple[int, ...]
+
+    def to_publish(self, result: AnimalResult) -> ComputedAnimal:
+        """The result with what ties it to the store."""
+        return ComputedAnimal(
+            self.animal.animal_id,
+            self.snapshot_commit_no,
+            result.estimator,
+            result.parameters,
+            result.months,
+            result.rows,
+            self.zone_keys,
+            result.track_digest,
+            result.digest,
+        )
 
 
 @dataclass(frozen=True)
@@ -68,6 +83,7 @@ class TaskReader:
                 minimum_stay_hours=owner.minimum_stay_hours,
             ),
             zones.zones,
+            _told_of_at_ms(connection, animal.animal_id),
             _fitted(connection, animal.animal_id),
         )
         return Task(animal, last_commit_no(connection), sent, zones.keys)
@@ -99,6 +115,12 @@ def _read_zones(connection: Connection, owner: ProgrammeRecord) -> _ProgrammeZon
         for version in versions
     )
     return _ProgrammeZones(tuple(version.key for version in versions), zones)
+
+
+def _told_of_at_ms(connection: Connection, animal_id: int) -> int:
+    animal, commit = schema.animal, schema.store_commit
+    query = select(commit.c.at_ms).join_from(animal, commit, commit.c.commit_no == animal.c.revision)
+    return int(connection.execute(query.where(animal.c.id == animal_id)).scalar_one())
 
 
 def _fitted(connection: Connection, animal_id: int) -> Fitted | None:

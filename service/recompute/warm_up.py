@@ -28,5 +28,6 @@ def warm_up() -> None:
                 30.0,
                 ZoneUseOptions(),
                 (ZoneInput("warm-up", 1, json.dumps(_SQUARE), "straight", None, None, None),),
+                fixes * 3_600_000,
             )
         )

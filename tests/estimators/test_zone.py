@@ -76,3 +76,10 @@ def test_wide_zone_with_positions_between():
         100,
         10,
     ]
+
+
+def test_a_tiny_zone_keeps_its_area_in_geojson():
+    """A square of a centimetre: six decimals would make it a point."""
+    side = 1e-7
+    geometry = shape([[0, 0], [side, 0], [side, side], [0, side], [0, 0]]).to_geojson()
+    assert ZoneShape.from_geojson(geometry).polygon.area == pytest.approx(side**2, rel=0.03)

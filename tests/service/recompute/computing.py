@@ -7,7 +7,7 @@ from sqlalchemy import text
 from service.recompute.task import compute_animal
 from service.recompute.task_reading import TaskReader
 from service.store.database import DEFAULT_PROGRAMME
-from service.store.publications import ComputedAnimal, publish
+from service.store.publications import publish
 from service.store.staleness import stale_animals, status
 from service.store.zone_use_reading import ZoneUseFilter, zone_use_page
 
@@ -20,18 +20,7 @@ def read_task(store, animal):
 
 
 def computed(task):
-    result = compute_animal(task.sent)
-    return ComputedAnimal(
-        task.animal.animal_id,
-        task.snapshot_commit_no,
-        result.estimator,
-        result.parameters,
-        result.months,
-        result.rows,
-        task.zone_keys,
-        result.track_digest,
-        result.digest,
-    )
+    return task.to_publish(compute_animal(task.sent))
 
 
 def stale(store, now_ms=LATE_MS):

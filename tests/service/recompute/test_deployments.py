@@ -9,9 +9,9 @@ TIME_MS = np.arange(10, dtype=np.int64) * DAY_MS
 NO_TAG = np.zeros(10, dtype=np.int64)
 
 
-def _tracked(deployments=(), window_hours=None, tag=NO_TAG, tag_names=("",), time_ms=TIME_MS, zone="UTC"):
+def _tracked(deployments=(), window_hours=None, tag=NO_TAG, tag_names=("",), time_ms=TIME_MS, zone="UTC", told_day=1000):
     attributes = {"deployments": list(deployments), "post_release_window_hours": window_hours}
-    spans, counted, implied = tracked_time(attributes, tag, tag_names, time_ms, zone)
+    spans, counted, implied = tracked_time(attributes, tag, tag_names, time_ms, zone, told_day * DAY_MS)
     return [(start / DAY_MS, end / DAY_MS) for start, end in spans], np.nonzero(counted)[0].tolist(), implied
 
 
@@ -34,6 +34,12 @@ def test_closed_deployment():
     """A stated end ends the tracked time, with or without fixes, and does not belong to it."""
     assert _tracked([_deployment("1970-01-03", "1970-01-05")]) == ([(2.0, 4.0)], [2, 3], False)
     assert _tracked([_deployment("1970-01-09", "1970-01-20")]) == ([(8.0, 19.0)], [8, 9], False)
+
+
+def test_deployment_that_ends_in_the_future_is_tracked_until_the_animal_was_last_told_of():
+    """What a tag will do next year is not known today, and no row speaks of it."""
+    assert _tracked([_deployment("1970-01-09", "1970-01-20")], told_day=12) == ([(8.0, 12.0)], [8, 9], False)
+    assert _tracked([_deployment("1970-01-15", "1970-01-20")], told_day=12) == ([], [], False)
 
 
 def test_open_deployment_ends_at_its_last_fix():

@@ -28,6 +28,7 @@ def _animal(rows, **attributes):
         50.0,
         ZoneUseOptions(),
         (SQUARE,),
+        START_MS + 10_000 * HOUR_MS,
     )
 
 
