@@ -87,7 +87,7 @@ def _check_finite(lon: FloatArray, lat: FloatArray, cov: FloatArray) -> None:
     if not np.all(usable_covariance(cov)):
         raise TrackError(
             "bad_error",
-            "A fix's error is not positive, or its ellipse is too narrow to be computed with. State it as a radius.",
+            "A fix's error is not positive definite, or its ellipse is too narrow to be computed with. State a radius.",
         )
 
 

@@ -9,7 +9,7 @@ TIME_MS = np.arange(10, dtype=np.int64) * DAY_MS
 NO_TAG = np.zeros(10, dtype=np.int64)
 
 
-def _tracked(deployments=(), window_hours=None, tag=NO_TAG, tag_names=("",), time_ms=TIME_MS, zone="UTC", told_day=1000):
+def _tracked(deployments=(), window_hours=None, tag=NO_TAG, tag_names=("",), time_ms=TIME_MS, zone="UTC", told_day=999):
     attributes = {"deployments": list(deployments), "post_release_window_hours": window_hours}
     spans, counted, implied = tracked_time(attributes, tag, tag_names, time_ms, zone, told_day * DAY_MS)
     return [(start / DAY_MS, end / DAY_MS) for start, end in spans], np.nonzero(counted)[0].tolist(), implied
