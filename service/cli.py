@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import argparse
 import os
+import signal
 import sys
 from collections.abc import Sequence
 from pathlib import Path
@@ -12,6 +13,7 @@ from service.problems import Problem
 from service.settings import Settings, SettingsError
 
 REFUSED = 2
+INTERRUPTED = 130
 
 
 def _parser() -> argparse.ArgumentParser:
@@ -38,7 +40,12 @@ def _parser() -> argparse.ArgumentParser:
 
 
 def main(arguments: Sequence[str] | None = None) -> int:
-    """Run one command and return its exit status: 0 done, 2 refused; `estimate` has 3 for rows refused."""
+    """Run one command.
+
+    Returns
+    -------
+    int, exit status: 0 done, 2 refused, 130 interrupted; `estimate` has 3 for some rows refused
+    """
     asked = _parser().parse_args(arguments)
     try:
         return _COMMANDS[asked.command](asked)
@@ -46,6 +53,9 @@ def main(arguments: Sequence[str] | None = None) -> int:
         print(fault, file=sys.stderr)
     except Problem as fault:
         print(f"{fault.title}: {fault.detail}", file=sys.stderr)
+    except KeyboardInterrupt:
+        print("\nStopped.", file=sys.stderr)
+        return INTERRUPTED
     return REFUSED
 
 
@@ -67,6 +77,8 @@ def _demo(asked: argparse.Namespace) -> int:
 def _estimate(asked: argparse.Namespace) -> int:
     from service.estimate_files import estimate_files  # noqa: PLC0415
 
+    # Ended in either way, its temporary store, which holds the positions, is removed.
+    signal.signal(signal.SIGTERM, signal.default_int_handler)
     return estimate_files(asked.tracks, asked.zones, asked.out, Settings.from_environment(os.environ))
 
 

@@ -11,6 +11,7 @@ import sys
 import tempfile
 import time
 from collections.abc import Iterator
+from contextlib import contextmanager
 from dataclasses import asdict, fields, replace
 from io import BufferedReader
 from pathlib import Path
@@ -21,22 +22,24 @@ from sqlalchemy import Connection
 from tqdm import tqdm
 
 from service.media_types import CSV, JSON
+from service.problems import Problem
 from service.readers.fix_rows import ReadOutcome, RejectedRow
 from service.readers.json_body import read_json_object
 from service.readers.tracks_csv import read_tracks_csv
 from service.readers.tracks_json import read_tracks_json
-from service.readers.zones_geojson import ReadZone, read_zones
+from service.readers.zones_geojson import read_zones
 from service.recompute.reconciler import Reconciler
 from service.settings import Settings
 from service.store.database import DEFAULT_PROGRAMME, Store
 from service.store.staleness import status
 from service.store.submissions import Payload, Receipt, record_tracks, rejected_rows
 from service.store.zone_use_reading import ZoneUseFilter, zone_use_page
-from service.store.zones import NewZoneVersion, get_zone, put_zone
+from service.store.zones import put_zone
 from service.writers.csv_cells import csv_bytes
 from service.writers.instants import utc_text
-from service.writers.zone_features import feature_collection, zone_feature
+from service.writers.zone_features import feature_collection
 from service.writers.zone_use_csv import zone_use_csv
+from service.writers.zone_use_features import features_with_rows
 from service.writers.zone_use_rows import CAUTIONS, zone_use_row
 
 ALL_ACCEPTED: Final = 0
@@ -101,30 +104,28 @@ def _estimate(store: Store, settings: Settings, tracks: Path, zones: Path, out: 
 
 
 def _record_zones(store: Store, path: Path, time_zone: str) -> None:
-    body = read_json_object(path.read_bytes())
-    if body.get("type") == "Feature":
-        body = {"type": "FeatureCollection", "features": [body]}
-    zones = read_zones(body, time_zone)
+    with _told_as_fault_of(path):
+        body = read_json_object(path.read_bytes())
+        if body.get("type") == "Feature":
+            body = {"type": "FeatureCollection", "features": [body]}
+        zones = read_zones(body, time_zone)
     with store.write("zones") as tx:
         for zone in zones:
-            put_zone(tx, DEFAULT_PROGRAMME, zone.identifier, _new_version(zone))
+            put_zone(tx, DEFAULT_PROGRAMME, zone)
 
 
-def _new_version(zone: ReadZone) -> NewZoneVersion:
-    return NewZoneVersion(
-        zone.name,
-        zone.in_force_from,
-        zone.in_force_until,
-        zone.season,
-        zone.edges,
-        zone.geometry_sent,
-        zone.shape.to_geojson(),
-        list(zone.shape.notes),
-    )
+@contextmanager
+def _told_as_fault_of(path: Path) -> Iterator[None]:
+    """A problem of what the file holds begins with the file's name: there are two files."""
+    try:
+        yield
+    except Problem as fault:
+        fault.title = f"{path}: {fault.title}"
+        raise
 
 
 def _record_tracks(store: Store, path: Path) -> Receipt:
-    with path.open("rb") as file:
+    with path.open("rb") as file, _told_as_fault_of(path):
         return record_tracks(store, DEFAULT_PROGRAMME, *_read(file, path))
 
 
@@ -141,8 +142,8 @@ def _read(file: BufferedReader, path: Path) -> tuple[Payload, Iterator[Any], Rea
 def _compute(store: Store, settings: Settings) -> bool:
     """Compute everything, with a progress bar; False, and the reasons told, if an animal failed."""
     reconciler = Reconciler(store, settings)
-    reconciler.start()
     try:
+        reconciler.start()
         with store.read() as connection:
             total = int(status(connection)["pending"])
         with tqdm(total=total, desc="Computing zone use", unit="animal") as bar:
@@ -166,7 +167,7 @@ def _all_rows(connection: Connection) -> list[Row]:
     after = None
     while page := zone_use_page(connection, DEFAULT_PROGRAMME, ZoneUseFilter(), after, PAGE_ROWS):
         rows += [zone_use_row(stored, DEFAULT_PROGRAMME) for stored in page]
-        after = (page[-1].animal, page[-1].month, page[-1].zone, page[-1].zone_version)
+        after = page[-1].place
     return rows
 
 
@@ -178,25 +179,10 @@ def _write_rows(out: Path, connection: Connection, settings: Settings) -> None:
         "minimum_stay_hours": settings.minimum_stay_hours,
         "cautions": list(CAUTIONS),
     }
-    features = _features_with_rows(connection, rows)
+    features = features_with_rows(connection, DEFAULT_PROGRAMME, rows)
     (out / "zone_use.json").write_bytes(orjson.dumps({**members, "rows": rows, "next": None}))
     (out / "zone_use.csv").write_bytes(zone_use_csv(rows))
     (out / "zone_use.geojson").write_bytes(orjson.dumps(feature_collection(features, **members, next=None)))
-
-
-def _features_with_rows(connection: Connection, rows: list[Row]) -> list[Row]:
-    """One feature per zone version, its rows in the properties."""
-    rows_of: dict[tuple[str, int], list[Row]] = {}
-    for row in rows:
-        rows_of.setdefault((row["zone"], row["zone_version"]), []).append(row)
-    features = []
-    for zone in sorted({zone for zone, _ in rows_of}):
-        for version in get_zone(connection, DEFAULT_PROGRAMME, zone):
-            if found := rows_of.get((zone, version.version)):
-                feature = zone_feature(version)
-                feature["properties"]["rows"] = found
-                features.append(feature)
-    return features
 
 
 def _write_rejected(out: Path, rejected: list[RejectedRow]) -> None:

@@ -82,14 +82,26 @@ class Settings:
         return cls(**values)
 
     def with_admin_key(self) -> Settings:
-        """These settings with the admin key: the one given, the one in the data directory, or a new one kept there."""
+        """These settings with the admin key: the one given, the one in the data directory, or a new one kept there.
+
+        Raises
+        ------
+        SettingsError
+            The file of the key cannot be read or written, or holds no key.
+        """
         if self.admin_key:
             return self
         path = self.data / ADMIN_KEY_FILE
-        if not path.exists():
-            self.data.mkdir(parents=True, exist_ok=True)
-            _write_private(path, secrets.token_urlsafe(32))
-        return replace(self, admin_key=path.read_text("utf-8").strip())
+        try:
+            if not path.exists():
+                self.data.mkdir(parents=True, exist_ok=True)
+                _write_private(path, secrets.token_urlsafe(32))
+            return replace(self, admin_key=_key(path.read_text("ascii").strip()))
+        except OSError as fault:
+            reason = f"{fault.strerror}. Give the server the right to read and write it"
+        except ValueError:
+            reason = "it holds no key of at least 8 printable ASCII characters. Remove it to have a new key written"
+        raise SettingsError(f"The key in {path} cannot be used: {reason}, or set SOJOURN_ADMIN_KEY.")
 
 
 def _write_private(path: Path, text: str) -> None:
@@ -119,7 +131,7 @@ def _number(lowest: float, highest: float) -> Callable[[str], float]:
         except ValueError:
             value = float("nan")
         if not lowest <= value <= highest:
-            raise ValueError(f"give a number from {lowest:g} to {highest:g}.")
+            raise ValueError(f"give a number from {lowest:g} to {highest:.7g}.")
         return value
 
     return read

@@ -6,23 +6,29 @@ import math
 from collections.abc import Callable, Mapping
 from typing import Any, Final
 
-from estimators import CalendarError, local_date_ms
+from estimators import CalendarError
 from service.problems import Problem
+from service.readers.dates import date_ms
 from service.readers.identifiers import identifier_fault
+from service.readers.times import EARLIEST
 
 ESTIMATORS: Final = ("random_walk", "brownian_bridge")
 LONGEST_TEXT: Final = 300
 MOST_ENTRIES: Final = 1000
+FIRST_DEPLOYMENT_MS: Final = round(EARLIEST.timestamp() * 1000)
+LAST_DEPLOYMENT_MS: Final = 7_258_118_400_000
+"""2200-01-01 in UTC. A deployment has a row for each of its months, whatever its end."""
 
 Errors = list[dict[str, str]]
 
 
-def read_animal_attributes(body: Mapping[str, Any], time_zone: str) -> dict[str, Any]:
+def read_animal_attributes(body: Mapping[str, Any], animal: str, time_zone: str) -> dict[str, Any]:
     """Attributes of an animal, every one present, absent ones None or empty.
 
     Parameters
     ----------
     body : mapping, as sent
+    animal : str, identifier from the path; one in the body must be the same
     time_zone : str, IANA name, for dates of deployments
 
     Raises
@@ -34,6 +40,9 @@ def read_animal_attributes(body: Mapping[str, Any], time_zone: str) -> dict[str,
     for name in body:
         if name not in _READERS and name != "animal":
             _add(errors, f"/{name}", "unknown_attribute", f"{name[:40]!r} is unknown. Known: {', '.join(_READERS)}.")
+    if body.get("animal", animal) != animal:
+        message = f"The body is of animal {str(body['animal'])[:40]!r}, the path of {animal!r}. Make them the same."
+        _add(errors, "/animal", "animal_mismatch", message)
     attributes = {name: read(body.get(name), f"/{name}", errors) for name, read in _READERS.items()}
     _check_deployment_times(attributes["deployments"] or [], time_zone, errors)
     if errors:
@@ -128,7 +137,7 @@ def _check_deployment_times(deployments: list[dict[str, Any]], time_zone: str, e
         for name in ("start", "end"):
             if (text := deployment[name]) is not None:
                 try:
-                    instants[name] = local_date_ms(text, time_zone)
+                    instants[name] = date_ms(text, time_zone, FIRST_DEPLOYMENT_MS, LAST_DEPLOYMENT_MS)
                 except CalendarError as fault:
                     _add(errors, f"{pointer}/{name}", fault.code, fault.message)
         if deployment["start"] is None:

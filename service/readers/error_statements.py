@@ -24,8 +24,8 @@ from service.readers.faults import Faults
 FloatArray = NDArray[np.float64]
 Statement = tuple[str, ...]
 
-LARGEST_ERROR_SD_M: Final = 1e7
-"""A quarter of a meridian: a fix with a larger error says nothing about where the animal was."""
+LARGEST_ERROR_SD_M: Final = 1e6
+"""A fix with a larger error says nothing about where the animal was, and no plane frame holds it."""
 
 ERROR_COLUMNS: Final = tuple(column for columns in ERROR_KINDS.values() for column in columns)
 """Every column that states an error, or a part of one."""

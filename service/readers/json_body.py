@@ -4,9 +4,11 @@ from __future__ import annotations
 
 from typing import Any
 
+import ijson
 import orjson
 
 from service.problems import Problem
+from service.readers.bounded_json import refuse_deep_json
 
 
 def read_json_object(body: bytes) -> dict[str, Any]:
@@ -26,6 +28,7 @@ def read_json_object(body: bytes) -> dict[str, Any]:
         raise Problem(400, "empty-body", "The body is empty", "The body is empty. Send a JSON object.")
     try:
         text.decode("utf-8")
+        refuse_deep_json(text)
         value = orjson.loads(text)
     except UnicodeDecodeError as fault:
         detail = f"Byte {fault.start} cannot be read as UTF-8 ({fault.reason}). Save as UTF-8."
@@ -33,6 +36,8 @@ def read_json_object(body: bytes) -> dict[str, Any]:
     except orjson.JSONDecodeError as fault:
         detail = f"Line {fault.lineno}, column {fault.colno}: {fault.msg}. NaN and Infinity are not JSON."
         raise Problem(400, "not-json", "The body is not JSON", detail) from fault
+    except ijson.JSONError as fault:
+        raise Problem(400, "not-json", "The body is not JSON", f"It cannot be read: {fault}.") from fault
     if not isinstance(value, dict):
         detail = f"The body is a {type(value).__name__}. Send a JSON object."
         raise Problem(422, "not-an-object", "The body is not an object", detail)

@@ -19,7 +19,7 @@ EARLIEST: Final = datetime(1957, 1, 1, tzinfo=UTC)
 _EPOCH = datetime(1970, 1, 1, tzinfo=UTC)
 _MS = timedelta(milliseconds=1)
 _EARLIEST_MS = (EARLIEST - _EPOCH) // _MS
-_TIME = re.compile(r"(\d{4}-\d\d-\d\d[T ]\d\d:\d\d)(?::(\d\d))?(?:[.,](\d{1,9}))?(Z|[+-]\d\d(?::?\d\d)?)?", re.ASCII)
+_TIME = re.compile(r"(\d{4}-\d\d-\d\d[T ]\d\d:\d\d)(?::(\d\d))?(?:[.,](\d+))?(Z|[+-]\d\d(?::?\d\d)?)?", re.ASCII)
 _WRITE = "Write it with its offset: 2026-03-01T06:00:00Z."
 
 # Characters of the common form 2026-03-01T06:00:00[.123]Z, and where its digits stand.
@@ -79,7 +79,7 @@ def _read_common_form(texts: Sequence[str]) -> tuple[NDArray[np.int64], NDArray[
     good = np.all(is_digit[:, _DIGITS], axis=1)
     for place, allowed in _SEPARATORS.items():
         good &= np.isin(code[:, place], [ord(sign) for sign in allowed])
-    length = np.count_nonzero(code, axis=1)
+    length = np.fromiter(map(len, texts), np.int64, len(texts))
     good &= (length == 20) | (length > 21)
     good &= code[np.arange(len(texts)), np.maximum(length, 1) - 1] == ord("Z")
     good &= (length == 20) | (code[:, 19] == ord("."))
@@ -126,7 +126,11 @@ def _read_one(text: str, time_zone: ZoneInfo | None) -> int | tuple[str, str]:
             f"{_shown(text)} has no offset, so its instant is not known. {_WRITE} "
             "Or send the rows with ?time_zone= and the IANA name of their zone.",
         )
-    return _read_local(naive, time_zone)
+    try:
+        return _read_local(naive, time_zone)
+    except OverflowError:
+        # At the ends of the calendar there is no UTC to turn it into.
+        return _bad_time(text)
 
 
 def _read_local(naive: datetime, time_zone: ZoneInfo) -> int | tuple[str, str]:

@@ -2,9 +2,8 @@
 
 from __future__ import annotations
 
-import decimal
 from collections.abc import Iterator
-from itertools import islice
+from decimal import InvalidOperation
 from typing import Any, BinaryIO, Final
 from zoneinfo import ZoneInfo
 
@@ -12,16 +11,17 @@ import ijson
 import numpy as np
 
 from service.problems import Problem
+from service.readers.bounded_json import BoundedJson
 from service.readers.faults import Faults
 from service.readers.fix_columns import KNOWN_COLUMNS, checked_chunk, no_rows_problem, time_zone_of
 from service.readers.fix_rows import CHUNK_ROWS, FixChunk, ReadOutcome
 
-LONGEST_NUMBER: Final = 640
-"""Digits in a row that a body may have: Python reads integers of that length under any setting."""
+CHUNK_BYTES: Final = 8_000_000
+"""A chunk ends here although it has few rows: rows may be large."""
+UNKNOWN_COLUMNS_TOLD: Final = 1000
 
 _BOM = b"\xef\xbb\xbf"
 _PEEKED_BYTES = 65536
-_DIGITS_AS_ZEROS = bytes.maketrans(b"123456789", b"000000000")
 
 
 def read_tracks_json(
@@ -45,39 +45,27 @@ def read_tracks_json(
     """
     zone = time_zone_of(time_zone)
     _find_array(stream)
-    items = ijson.items(_ShortNumbers(stream), "item")
+    bounded = BoundedJson(stream)
+    entries = ijson.items(bounded, "item")
     try:
-        while rows := list(islice(items, CHUNK_ROWS)):
+        while rows := _next_rows(entries, bounded):
             yield _chunk(rows, received_at_ms, zone, outcome)
     except ijson.JSONError as fault:
         raise _json_problem(str(fault), outcome.rows) from fault
-    except decimal.InvalidOperation as fault:
+    except InvalidOperation as fault:
         raise _json_problem("the exponent of a number is too large", outcome.rows) from fault
     if outcome.rows == 0:
         raise no_rows_problem()
 
 
-class _ShortNumbers:
-    """A stream that refuses numbers too long for Python's integers: the compiled parser would end the process."""
-
-    def __init__(self, stream: BinaryIO) -> None:
-        self._stream, self._before = stream, b""
-
-    def read(self, size: int) -> bytes:
-        block = self._stream.read(size)
-        signs = self._before + block.translate(_DIGITS_AS_ZEROS)
-        if b"0" * (LONGEST_NUMBER + 1) in signs:
-            raise ijson.JSONError(f"there are more than {LONGEST_NUMBER} digits in a row")
-        self._before = signs[-LONGEST_NUMBER:]
-        return block
-
-
 def _find_array(stream: BinaryIO) -> None:
     """Leave the stream at its array, or refuse it."""
     stream.seek(0)
-    start = stream.read(_PEEKED_BYTES)
-    stream.seek(len(_BOM) if start.startswith(_BOM) else 0)
-    first = start.removeprefix(_BOM).lstrip()[:1]
+    stream.seek(len(_BOM) if stream.read(len(_BOM)) == _BOM else 0)
+    first = b""
+    while not first and (peeked := stream.read(_PEEKED_BYTES)):
+        first = peeked.lstrip()[:1]
+    stream.seek(-len(peeked.lstrip()), 1)
     if not first:
         raise Problem(400, "empty-body", "The body is empty", "The body is empty. Send an array of objects.")
     if first == b"{":
@@ -86,6 +74,17 @@ def _find_array(stream: BinaryIO) -> None:
         )
     if first != b"[":
         raise _json_problem("it does not begin with [", 0)
+
+
+def _next_rows(entries: Iterator[Any], bounded: BoundedJson) -> list[Any]:
+    """The next entries of the array, bounded in number and in size."""
+    rows: list[Any] = []
+    most_bytes = bounded.taken + CHUNK_BYTES
+    for entry in entries:
+        rows.append(entry)
+        if len(rows) == CHUNK_ROWS or bounded.taken > most_bytes:
+            break
+    return rows
 
 
 def _json_problem(message: str, rows: int) -> Problem:
@@ -100,6 +99,7 @@ def _json_problem(message: str, rows: int) -> Problem:
 def _chunk(rows: list[Any], received_at_ms: int, zone: ZoneInfo | None, outcome: ReadOutcome) -> FixChunk:
     faults = Faults()
     columns: dict[str, list[str]] = {name: [""] * len(rows) for name in KNOWN_COLUMNS}
+    unknown = dict.fromkeys(outcome.unknown_columns)
     for place, row in enumerate(rows):
         if not isinstance(row, dict):
             message = "The array holds something that is not an object. Write one object per fix."
@@ -107,12 +107,12 @@ def _chunk(rows: list[Any], received_at_ms: int, zone: ZoneInfo | None, outcome:
             continue
         for name, value in row.items():
             if name not in columns:
-                if name not in outcome.unknown_columns:
-                    outcome.unknown_columns.append(name)
+                unknown[name] = None
             elif isinstance(value, dict | list | bool):
                 faults.add(place, None, "not_a_value", f"{name} must be a text or a number.", _shown(value))
             elif value is not None:
                 columns[name][place] = str(value)
+    outcome.unknown_columns = list(unknown)[:UNKNOWN_COLUMNS_TOLD]
     row_number = np.arange(outcome.rows + 1, outcome.rows + 1 + len(rows), dtype=np.int64)
     return checked_chunk(columns, row_number, received_at_ms, zone, outcome, faults)
 

@@ -7,8 +7,9 @@ from collections.abc import Mapping
 from dataclasses import dataclass
 from typing import Any, Final
 
-from estimators import CalendarError, Season, ZoneGeometryError, ZoneShape, local_date_ms
+from estimators import CalendarError, Season, ZoneGeometryError, ZoneShape
 from service.problems import Problem
+from service.readers.dates import date_ms
 from service.readers.identifiers import identifier_fault
 
 PROPERTIES: Final = ("name", "in_force_from", "in_force_until", "season", "edges")
@@ -74,7 +75,7 @@ def read_zone(body: Mapping[str, Any], identifier: str, time_zone: str) -> ReadZ
         raise _not_geojson("Feature", body)
     faults = _crs_faults(body, "")
     zone = _read_feature(body, identifier, "", time_zone, faults)
-    if (given := body.get("id", identifier)) != identifier:
+    if (given := body.get("id")) is not None and _as_text(given) != identifier:
         message = (
             f"The Feature's id {str(given)[:40]!r} is not {identifier!r}, the zone of the path. Make them the same."
         )
@@ -104,7 +105,7 @@ def read_zones(body: Mapping[str, Any], time_zone: str) -> list[ReadZone]:
         raise Problem(422, "no-rows", "The body holds no rows", "The FeatureCollection is empty. Send at least one.")
     faults = _crs_faults(body, "")
     zones: list[ReadZone] = []
-    seen: set[tuple[str, str | None]] = set()
+    seen: set[tuple[str, float]] = set()
     for number, feature in enumerate(features):
         pointer = f"/features/{number}"
         if not isinstance(feature, dict) or feature.get("type") != "Feature":
@@ -115,7 +116,7 @@ def read_zones(body: Mapping[str, Any], time_zone: str) -> list[ReadZone]:
         zone = _read_feature(feature, identifier, pointer, time_zone, faults)
         if zone is None:
             continue
-        if (key := (identifier, zone.in_force_from)) in seen:
+        if (key := (identifier, _begins_ms(zone, time_zone))) in seen:
             message = f"The zone {identifier[:40]!r} is there twice with the same in_force_from. Keep one."
             faults.append(_fault("duplicate_zone", message, f"{pointer}/id"))
         seen.add(key)
@@ -127,7 +128,7 @@ def read_zones(body: Mapping[str, Any], time_zone: str) -> list[ReadZone]:
 
 
 def _begins_ms(zone: ReadZone, time_zone: str) -> float:
-    return -math.inf if zone.in_force_from is None else local_date_ms(zone.in_force_from, time_zone)
+    return -math.inf if zone.in_force_from is None else date_ms(zone.in_force_from, time_zone)
 
 
 def _not_geojson(wanted: str, body: Mapping[str, Any]) -> Problem:
@@ -164,8 +165,7 @@ def _crs_faults(member: Mapping[str, Any], pointer: str) -> list[Fault]:
 
 def _identifier(feature: Mapping[str, Any], pointer: str, faults: list[Fault]) -> str:
     given = feature.get("id")
-    # RFC 7946 allows numbers as ids; a whole number is the same identifier in figures.
-    identifier = str(given) if isinstance(given, int) and not isinstance(given, bool) else given
+    identifier = _as_text(given)
     if given is None:
         faults.append(_fault("missing_id", "The feature has no id. Give the zone's identifier as its id.", pointer))
         return ""
@@ -175,6 +175,11 @@ def _identifier(feature: Mapping[str, Any], pointer: str, faults: list[Fault]) -
     if message := identifier_fault(identifier):
         faults.append(_fault("bad_id", message, f"{pointer}/id"))
     return identifier
+
+
+def _as_text(given: Any) -> Any:
+    # RFC 7946 allows numbers as ids; a whole number is the same identifier in figures.
+    return str(given) if isinstance(given, int) and not isinstance(given, bool) else given
 
 
 def _read_feature(
@@ -224,15 +229,16 @@ def _text(properties: Mapping[str, Any], name: str, pointer: str, faults: list[F
     return None
 
 
-def _check_dates(texts: Mapping[str, str | None], pointer: str, time_zone: str, faults: list[Fault]) -> None:
+def _check_dates(texts: dict[str, str | None], pointer: str, time_zone: str, faults: list[Fault]) -> None:
     instants = {}
     for name in ("in_force_from", "in_force_until"):
         text = texts[name]
         if text is not None:
             try:
-                instants[name] = local_date_ms(text, time_zone)
+                instants[name] = date_ms(text, time_zone)
             except CalendarError as fault:
                 faults.append(_fault(fault.code, f"{name}: {fault.message}", f"{pointer}/properties/{name}"))
+                texts[name] = None
     if len(instants) == 2 and instants["in_force_until"] <= instants["in_force_from"]:
         message = (
             f"in_force_until {texts['in_force_until']} is not after in_force_from {texts['in_force_from']}. "

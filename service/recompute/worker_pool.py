@@ -9,7 +9,7 @@ import threading
 import time
 from collections.abc import Callable
 from concurrent.futures import Executor, Future, ProcessPoolExecutor
-from multiprocessing.context import SpawnContext
+from multiprocessing.context import SpawnContext, SpawnProcess
 from typing import Any
 
 from service.recompute.task import AnimalInput, AnimalResult, compute_animal
@@ -56,9 +56,24 @@ class WorkerPool:
             self._workers, mp_context=self._context, initializer=prepare_worker, initargs=(os.getpid(),)
         )
         # A process is started per waiting task: these are there before the first animal is.
-        for _ in range(self._workers):
-            executor.submit(os.getpid)
+        try:
+            for _ in range(self._workers):
+                executor.submit(os.getpid)
+        except BaseException:
+            self._context.kill_all()
+            raise
         return executor
+
+
+class _Worker(SpawnProcess):
+    """Process that no Ctrl-C reaches before it is prepared: it inherits the signals held back at its start."""
+
+    def start(self) -> None:
+        before = signal.pthread_sigmask(signal.SIG_BLOCK, {signal.SIGINT, signal.SIGTERM})
+        try:
+            super().start()
+        finally:
+            signal.pthread_sigmask(signal.SIG_SETMASK, before)
 
 
 class _RecordingContext(SpawnContext):
@@ -69,7 +84,7 @@ class _RecordingContext(SpawnContext):
         self._started: list[multiprocessing.process.BaseProcess] = []
 
     def Process(self, *args: Any, **kwargs: Any) -> Any:  # type: ignore[override]  # noqa: N802 - executors call it
-        process = super().Process(*args, **kwargs)
+        process = _Worker(*args, **kwargs)
         self._started.append(process)
         return process
 
@@ -83,6 +98,7 @@ def prepare_worker(parent_pid: int) -> None:
     """Make this process a worker: it yields to the server, leaves Ctrl-C to it and ends with it."""
     os.nice(NICENESS)
     signal.signal(signal.SIGINT, signal.SIG_IGN)
+    signal.pthread_sigmask(signal.SIG_UNBLOCK, {signal.SIGINT, signal.SIGTERM})
     threading.Thread(target=_end_with, args=(parent_pid,), daemon=True).start()
     warm_up()
 

@@ -15,7 +15,7 @@ from service.principal import Caller
 from service.problems import Problem
 from service.readers.animal_attributes import read_animal_attributes
 from service.readers.json_body import read_json_object
-from service.routes.context import Site, json_response, refuse_identifier
+from service.routes.context import Site, WriteTurn, json_response, refuse_identifier
 from service.routes.models import AnimalBody, AnimalPage
 from service.routes.parameters import PageParameters, Parameters
 from service.store.animals import AnimalRecord, get_animal, list_animals, put_animal
@@ -54,6 +54,7 @@ def get_one_animal(
 @router.put(
     "/animals/{animal}",
     response_model=AnimalBody,
+    responses={201: {"model": AnimalBody, "description": "The animal is new."}},
     openapi_extra={"requestBody": {"required": True, "content": {JSON: {"schema": {"type": "object"}}}}},
 )
 def put_one_animal(
@@ -63,10 +64,11 @@ def put_one_animal(
     animal: str,
     _: Annotated[Parameters, Query()],
     body: Annotated[SpooledBody, Depends(spooled(JSON, largest_bytes=LARGEST_ANIMAL_BYTES))],
+    _turn: WriteTurn,
 ) -> Response:
     """Set all attributes of an animal; those left out are none. Fixes are not touched."""
     refuse_identifier(animal)
-    attributes = read_animal_attributes(read_json_object(body.file.read()), site.settings.time_zone)
+    attributes = read_animal_attributes(read_json_object(body.file.read()), animal, site.settings.time_zone)
     with site.store.write("animal") as tx:
         before = get_animal(tx.connection, caller.programme, animal)
         check_preconditions(request.headers, before.revision if before else None)

@@ -2,8 +2,10 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
-from typing import Annotated, Any
+import asyncio
+from collections.abc import AsyncIterator
+from dataclasses import dataclass, field
+from typing import Annotated, Any, Final
 
 import orjson
 from fastapi import Depends, Request
@@ -16,6 +18,9 @@ from service.recompute.reconciler import Reconciler
 from service.settings import Settings
 from service.store.database import Store
 
+WRITES_AT_A_TIME: Final = 8
+"""Writes that may hold a thread while they wait for each other; the server's other threads are left to readers."""
+
 
 @dataclass(frozen=True)
 class Context:
@@ -24,6 +29,7 @@ class Context:
     store: Store
     settings: Settings
     reconciler: Reconciler | None
+    write_turns: asyncio.Semaphore = field(default_factory=lambda: asyncio.Semaphore(WRITES_AT_A_TIME))
 
     def notify(self) -> None:
         """Tell the reconciler, if there is one, that something was written."""
@@ -37,6 +43,15 @@ async def _context(request: Request) -> Context:
 
 
 Site = Annotated[Context, Depends(_context)]
+
+
+async def _write_turn(site: Site) -> AsyncIterator[None]:
+    async with site.write_turns:
+        yield
+
+
+WriteTurn = Annotated[None, Depends(_write_turn)]
+"""Last parameter of a route that writes: after its body, so that a slow upload does not keep others waiting."""
 
 
 def json_response(

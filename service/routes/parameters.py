@@ -75,7 +75,7 @@ class MonthRangeParameters(PageParameters):
 class ZoneUseParameters(MonthRangeParameters):
     """Parameters of GET /zone-use."""
 
-    nonzero: bool = Field(False, description="Leave out rows in which the animal was surely outside.")
+    nonzero: bool = Field(False, description="Leave out rows whose covered time was surely spent outside.")
 
 
 async def refuse_repeated(request: Request) -> None:

@@ -11,6 +11,7 @@ from sqlalchemy import Connection
 from starlette.responses import Response, StreamingResponse
 
 from service.cursors import pack_cursor, unpack_cursor
+from service.media_types import CSV, GEOJSON, JSON
 from service.principal import Caller
 from service.problems import Problem
 from service.routes.context import Site, json_response
@@ -22,6 +23,9 @@ from service.writers.receipts import receipt_body, rejected_bodies
 router = APIRouter(tags=["submissions"])
 
 _READ_BYTES = 262_144
+_PAYLOAD: dict[int | str, dict[str, Any]] = {
+    200: {"content": {name: {"schema": {"type": "string", "format": "binary"}} for name in (CSV, JSON, GEOJSON)}}
+}
 
 
 @router.get("/submissions", response_model=SubmissionPage)
@@ -61,7 +65,7 @@ def get_rejected(
     return json_response(body)
 
 
-@router.get("/submissions/{submission}/payload", response_class=Response)
+@router.get("/submissions/{submission}/payload", response_class=Response, responses=_PAYLOAD)
 def get_payload(site: Site, caller: Caller, submission: str, _: Annotated[Parameters, Query()]) -> Response:
     """The bytes as they were sent."""
     with site.store.read() as connection:

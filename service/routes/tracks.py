@@ -17,7 +17,7 @@ from service.problems import Problem, problem_response
 from service.readers.fix_rows import ReadOutcome, RejectedRow
 from service.readers.tracks_csv import read_tracks_csv
 from service.readers.tracks_json import read_tracks_json
-from service.routes.context import Context, Site, json_response
+from service.routes.context import Context, Site, WriteTurn, json_response
 from service.routes.models import TrackReceiptBody
 from service.routes.parameters import TrackParameters
 from service.store.submissions import Payload, Receipt, find_by_sha256, record_tracks, rejected_rows
@@ -52,6 +52,7 @@ def post_tracks(
     caller: Caller,
     parameters: Annotated[TrackParameters, Query()],
     body: Annotated[SpooledBody, Depends(spooled(CSV, JSON))],
+    _turn: WriteTurn,
 ) -> Response:
     """Take fixes: columns animal, time, lon, lat, optional tag, and at most one way of stating error per row."""
     sent = {} if parameters.time_zone is None else {"time_zone": parameters.time_zone}

@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import time
-from collections.abc import Sequence
 from typing import Annotated, Any
 from urllib.parse import urlencode
 
@@ -27,13 +26,12 @@ from service.store.zones import get_zone
 from service.writers.instants import utc_text
 from service.writers.summary import USING_RULE, summary_csv
 from service.writers.summary_pages import summary_page
-from service.writers.zone_features import ended_feature, feature_collection, zone_feature
+from service.writers.zone_features import feature_collection
 from service.writers.zone_use_csv import zone_use_csv
+from service.writers.zone_use_features import features_with_rows, flat_features
 from service.writers.zone_use_rows import CAUTIONS, zone_use_row
 
 router = APIRouter(tags=["zone use"], dependencies=[Depends(wait_if_preferred)])
-
-Row = dict[str, Any]
 
 _OFFERED = (JSON, CSV, GEOJSON)
 _OTHER_FORMS: dict[int | str, dict[str, Any]] = {
@@ -55,15 +53,13 @@ def get_zone_use(
         page = found[: parameters.limit]
         rows = [zone_use_row(stored, caller.programme) for stored in page]
         members = _members(connection, caller.programme, wanted, minimum_stay_hours=site.settings.minimum_stay_hours)
-        features = _features_with_rows(connection, caller.programme, rows) if media_type == GEOJSON else []
-    last = page[-1] if len(found) > len(page) else None
-    more = None if last is None else pack_cursor([last.animal, last.month, last.zone, last.zone_version])
+        features = features_with_rows(connection, caller.programme, rows) if media_type == GEOJSON else []
+    more = pack_cursor(list(page[-1].place)) if len(found) > len(page) else None
     headers = _link(request, more)
     if media_type == CSV:
         return Response(zone_use_csv(rows), media_type=CSV, headers=headers)
     if media_type == GEOJSON:
-        collection = feature_collection(features, **members, next=more)
-        return json_response(collection, headers=headers, media_type=GEOJSON)
+        return json_response(feature_collection(features, **members, next=more), headers=headers, media_type=GEOJSON)
     return json_response({**members, "rows": rows, "next": more}, headers=headers)
 
 
@@ -79,14 +75,13 @@ def get_summary(
         wanted = _filter(connection, caller.programme, parameters)
         rows, more_key = summary_page(connection, caller.programme, wanted, after, parameters.limit)
         members = _members(connection, caller.programme, wanted, using_rule=USING_RULE)
-        features = _flat_features(connection, caller.programme, rows) if media_type == GEOJSON else []
+        features = flat_features(connection, caller.programme, rows) if media_type == GEOJSON else []
     more = None if more_key is None else pack_cursor(more_key)
     headers = _link(request, more)
     if media_type == CSV:
         return Response(summary_csv(rows), media_type=CSV, headers=headers)
     if media_type == GEOJSON:
-        collection = feature_collection(features, **members, next=more)
-        return json_response(collection, headers=headers, media_type=GEOJSON)
+        return json_response(feature_collection(features, **members, next=more), headers=headers, media_type=GEOJSON)
     return json_response({**members, "rows": rows, "next": more}, headers=headers)
 
 
@@ -122,37 +117,3 @@ def _link(request: Request, cursor: str | None) -> dict[str, str]:
         return {}
     query = urlencode([*((k, v) for k, v in request.query_params.multi_items() if k != "cursor"), ("cursor", cursor)])
     return {"Link": f'<{request.url.path}?{query}>; rel="next"'}
-
-
-def _features_with_rows(connection: Connection, programme: str, rows: Sequence[Row]) -> list[Row]:
-    """One feature per zone version on the page, its rows in the properties."""
-    rows_of: dict[tuple[str, int], list[Row]] = {}
-    for row in rows:
-        rows_of.setdefault((row["zone"], row["zone_version"]), []).append(row)
-    features = _features(connection, programme, rows)
-    for key, feature in features.items():
-        feature["properties"]["rows"] = rows_of[key]
-    return list(features.values())
-
-
-def _flat_features(connection: Connection, programme: str, rows: Sequence[Row]) -> list[Row]:
-    """One feature per zone version and month, its figures as plain properties, for maps."""
-    features = _features(connection, programme, rows)
-    flat = []
-    for row in rows:
-        feature = features[row["zone"], row["zone_version"]]
-        identifier = f"{feature['id']}/{row['month']}"
-        properties = {"id": identifier, "name": feature["properties"]["name"], **row}
-        flat.append({**feature, "id": identifier, "properties": properties})
-    return flat
-
-
-def _features(connection: Connection, programme: str, rows: Sequence[Row]) -> dict[tuple[str, int], Row]:
-    """Features of the zone versions of rows, by zone and version."""
-    wanted = sorted({(row["zone"], row["zone_version"]) for row in rows})
-    live = {
-        (version.zone, version.version): version
-        for zone in sorted({zone for zone, _ in wanted})
-        for version in get_zone(connection, programme, zone)
-    }
-    return {key: zone_feature(live[key]) if key in live else ended_feature(*key) for key in wanted}

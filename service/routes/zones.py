@@ -16,19 +16,12 @@ from service.principal import Caller
 from service.problems import Problem
 from service.readers.json_body import read_json_object
 from service.readers.zones_geojson import ReadZone, read_zone, read_zones
-from service.routes.context import Site, json_response, refuse_identifier
+from service.routes.context import Site, WriteTurn, json_response, refuse_identifier
 from service.routes.models import ZoneBody, ZonePage, ZoneReceiptBody, ZonesReceiptBody
 from service.routes.parameters import PageParameters, Parameters
 from service.store.database import WriteTransaction
 from service.store.submissions import Counts, Payload, store_submission
-from service.store.zones import (
-    NewZoneVersion,
-    ZoneOverlap,
-    get_zone,
-    list_zone_versions,
-    put_zone,
-    retire_zone,
-)
+from service.store.zones import ZoneOverlap, get_zone, list_zone_versions, put_zone, retire_zone
 from service.writers.zone_features import feature_collection, zone_bodies, zone_body, zone_feature
 
 LARGEST_ZONES_BYTES: Final = 50_000_000
@@ -83,9 +76,20 @@ def get_one_zone(
     return json_response(body, headers={"ETag": tag}, media_type=media_type)
 
 
-@router.put("/zones/{zone}", response_model=ZoneReceiptBody, openapi_extra=_GEOJSON_BODY)
+@router.put(
+    "/zones/{zone}",
+    response_model=ZoneReceiptBody,
+    responses={201: {"model": ZoneReceiptBody, "description": "The zone is new."}},
+    openapi_extra=_GEOJSON_BODY,
+)
 def put_one_zone(
-    request: Request, site: Site, caller: Caller, zone: str, _: Annotated[Parameters, Query()], body: ZoneBodyIn
+    request: Request,
+    site: Site,
+    caller: Caller,
+    zone: str,
+    _: Annotated[Parameters, Query()],
+    body: ZoneBodyIn,
+    _turn: WriteTurn,
 ) -> Response:
     """Store a version of a zone. The same in_force_from corrects that version; a later one ends it there."""
     refuse_identifier(zone)
@@ -103,8 +107,16 @@ def put_one_zone(
     return json_response(answer | told, 200 if before else 201, headers)
 
 
-@router.post("/zones", response_model=ZonesReceiptBody, openapi_extra=_GEOJSON_BODY)
-def post_zones(site: Site, caller: Caller, _: Annotated[Parameters, Query()], body: ZoneBodyIn) -> Response:
+@router.post(
+    "/zones",
+    response_model=ZonesReceiptBody,
+    status_code=201,
+    responses={200: {"model": ZonesReceiptBody, "description": "Nothing changed."}},
+    openapi_extra=_GEOJSON_BODY,
+)
+def post_zones(
+    site: Site, caller: Caller, _: Annotated[Parameters, Query()], body: ZoneBodyIn, _turn: WriteTurn
+) -> Response:
     """Store the zones of a FeatureCollection, all of them or none."""
     read = read_zones(read_json_object(body.file.read()), site.settings.time_zone)
     with site.store.write("zones") as tx:
@@ -123,7 +135,9 @@ def post_zones(site: Site, caller: Caller, _: Annotated[Parameters, Query()], bo
 
 
 @router.delete("/zones/{zone}", status_code=204)
-def delete_zone(request: Request, site: Site, caller: Caller, zone: str, _: Annotated[Parameters, Query()]) -> Response:
+def delete_zone(
+    request: Request, site: Site, caller: Caller, zone: str, _: Annotated[Parameters, Query()], _turn: WriteTurn
+) -> Response:
     """Retire a zone: all its live versions end; what was stored of it is kept."""
     with site.store.write("zone") as tx:
         before = get_zone(tx.connection, caller.programme, zone)
@@ -146,7 +160,7 @@ def _put_all(tx: WriteTransaction, programme: str, zones: Sequence[ReadZone]) ->
     changed, overlaps = 0, []
     for zone in zones:
         try:
-            changed += put_zone(tx, programme, zone.identifier, _new_version(zone))[1]
+            changed += put_zone(tx, programme, zone)[1]
         except ZoneOverlap as fault:
             overlaps.append({"zone": zone.identifier, "code": "overlapping_versions", "detail": str(fault)})
     if overlaps:
@@ -158,19 +172,6 @@ def _put_all(tx: WriteTransaction, programme: str, zones: Sequence[ReadZone]) ->
             {"errors": overlaps},
         )
     return changed
-
-
-def _new_version(zone: ReadZone) -> NewZoneVersion:
-    return NewZoneVersion(
-        zone.name,
-        zone.in_force_from,
-        zone.in_force_until,
-        zone.season,
-        zone.edges,
-        zone.geometry_sent,
-        zone.shape.to_geojson(),
-        list(zone.shape.notes),
-    )
 
 
 def _keep(

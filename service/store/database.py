@@ -13,7 +13,9 @@ from typing import IO
 
 from alembic import command
 from alembic.config import Config
+from alembic.util import CommandError
 from sqlalchemy import Connection, Engine, func, insert, select
+from sqlalchemy.exc import DBAPIError
 
 from service.settings import Settings
 from service.store import driver, schema
@@ -59,7 +61,7 @@ class Store:
         Raises
         ------
         StoreError
-            Another server has the data directory, or it cannot be used.
+            Another server has the data directory, or it or the database in it cannot be used.
         """
         try:
             settings.data.mkdir(parents=True, exist_ok=True)
@@ -68,13 +70,20 @@ class Store:
             raise StoreError(
                 f"The data directory {settings.data} cannot be used: {fault.strerror}. Set SOJOURN_DATA to another."
             ) from fault
-        store = cls(driver.open_engine(settings.data / DATABASE_FILE), lock)
+        path = settings.data / DATABASE_FILE
+        store = cls(driver.open_engine(path), lock)
         try:
             store._upgrade()
             with store.write("settings") as tx:
                 keep_programme(tx.connection, DEFAULT_PROGRAMME, settings, tx.commit_no)
-        except BaseException:
+        except BaseException as fault:
             store.close()
+            if isinstance(fault, DBAPIError):
+                cure = "Check that it and its directory can be written to, or set SOJOURN_DATA to another directory."
+                raise StoreError(f"The database {path} cannot be used: {fault.orig}. {cure}") from fault
+            if isinstance(fault, CommandError):
+                cure = "Install the version of Sojourn that it was last used with, or a later one."
+                raise StoreError(f"The tables of the database {path} are not known here: {fault}. {cure}") from fault
             raise
         return store
 
@@ -97,8 +106,9 @@ class Store:
                 yield WriteTransaction(connection, commit_no, now_ms)
 
     def close(self) -> None:
-        """Close all connections and give up the data directory."""
-        self._engine.dispose()
+        """Close all connections and give up the data directory, once whoever is writing has ended."""
+        with self._writer:
+            self._engine.dispose()
         self._lock.close()
 
     def _upgrade(self) -> None:

@@ -6,7 +6,7 @@ from collections.abc import Iterable, Sequence
 from pathlib import Path
 from typing import Any
 
-from sqlalchemy import Connection, Engine, Table, create_engine, event
+from sqlalchemy import URL, Connection, Engine, Table, create_engine, event
 
 # Temporary tables and sorts go to files, dirty pages beyond the cache to the write-ahead log: a large
 # submission must not take memory in proportion.
@@ -22,7 +22,9 @@ _PRAGMAS = (
 
 def open_engine(path: Path) -> Engine:
     """Engine on a SQLite file whose transactions begin where the program says so."""
-    engine = create_engine(f"sqlite+pysqlite:///{path}", pool_size=8, max_overflow=64, hide_parameters=True)
+    # Not a URL as text: a directory may have a question mark in its name.
+    url = URL.create("sqlite+pysqlite", database=str(path))
+    engine = create_engine(url, pool_size=8, max_overflow=64, hide_parameters=True)
 
     @event.listens_for(engine, "connect")
     def _configure(connection: Any, _record: Any) -> None:

@@ -34,7 +34,7 @@ class ZoneUseFilter:
     ----------
     animal, zone, group : str or None, identifiers
     month_from, month_to : str or None, ``"2026-03"``, both included
-    nonzero : bool, only rows with any use
+    nonzero : bool, only rows with any use, or without covered time
     """
 
     animal: str | None = None
@@ -69,6 +69,11 @@ class StoredRow:
     figures: ZoneMonth
     flags: tuple[str, ...]
 
+    @property
+    def place(self) -> Place:
+        """Where it stands in the order of rows."""
+        return self.animal, self.month, self.zone, self.zone_version
+
 
 def zone_use_page(
     connection: Connection, programme: str, wanted: ZoneUseFilter, after: Place | None, limit: int
@@ -85,7 +90,7 @@ def zone_use_page(
         stored = _stored_figures(connection, months, wanted)
         for month in months:
             for row in _rows_of_month(month, history, stored, wanted):
-                if after is None or _place(row) > after:
+                if after is None or row.place > after:
                     page.append(row)
                     if len(page) == limit:
                         return page
@@ -192,8 +197,5 @@ def _row(month: Row[Any], version: ZoneTimes, facts: MonthFacts, figures: ZoneMo
 
 
 def _is_zero(figures: ZoneMonth) -> bool:
-    return not figures.probability_mass and not figures.time_fraction
-
-
-def _place(row: StoredRow) -> Place:
-    return row.animal, row.month, row.zone, row.zone_version
+    # Without covered time both are None: nobody knows, and that is no zero.
+    return figures.probability_mass == 0.0 and figures.time_fraction == 0.0

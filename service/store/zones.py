@@ -9,35 +9,13 @@ from typing import Any
 from sqlalchemy import Connection, Row, Select, func, insert, select, update
 
 from estimators import local_date_ms
+from service.readers.zones_geojson import ReadZone
 from service.store import schema
 from service.store.database import WriteTransaction, last_commit_no
 from service.store.programmes import ProgrammeRecord, get_programme
 from service.store.zone_history import ZoneHistory, ZoneTimes
 
 _ALWAYS_MS = -(2**62)
-
-
-@dataclass(frozen=True)
-class NewZoneVersion:
-    """A zone version to be stored.
-
-    Attributes
-    ----------
-    name, in_force_from, in_force_until, season : str or None, as sent
-    edges : {"straight", "geodesic"}
-    geometry_sent : dict, GeoJSON geometry as sent; it is what is computed with
-    geometry : dict, the same as understood (`ZoneShape.to_geojson`)
-    notes : list of str, what was read in a way worth telling
-    """
-
-    name: str | None
-    in_force_from: str | None
-    in_force_until: str | None
-    season: str | None
-    edges: str
-    geometry_sent: dict[str, Any]
-    geometry: dict[str, Any]
-    notes: list[str]
 
 
 @dataclass(frozen=True)
@@ -98,10 +76,10 @@ def list_zone_versions(
     return _records(connection, query, ZoneHistory(connection, owner))
 
 
-def put_zone(
-    tx: WriteTransaction, programme: str, identifier: str, new: NewZoneVersion
-) -> tuple[ZoneVersionRecord, bool]:
+def put_zone(tx: WriteTransaction, programme: str, new: ReadZone) -> tuple[ZoneVersionRecord, bool]:
     """Store a zone version; with the ``in_force_from`` of a live one it supersedes that.
+
+    It is kept as sent, to be computed with, and as understood, to be shown.
 
     Returns
     -------
@@ -114,18 +92,18 @@ def put_zone(
         It would overlap a version that begins later.
     """
     owner = get_programme(tx.connection, programme)
-    live = get_zone(tx.connection, programme, identifier)
+    live = get_zone(tx.connection, programme, new.identifier)
     begins_ms = _instant(new.in_force_from, owner)
     same = next((record for record in live if record.from_ms == begins_ms), None)
     if same is None:
-        _check_ends_before_later(live, identifier, new, owner)
+        _check_ends_before_later(live, new, owner)
     elif _says_the_same(tx.connection, same, new):
         return same, False
     else:
         _end(tx, [same.key])
-    _insert(tx, owner, identifier, new)
+    _insert(tx, owner, new)
     _raise_zones_revision(tx, owner)
-    stored = get_zone(tx.connection, programme, identifier)
+    stored = get_zone(tx.connection, programme, new.identifier)
     return next(record for record in stored if record.from_ms == begins_ms), True
 
 
@@ -182,22 +160,20 @@ def _instant(text: str | None, owner: ProgrammeRecord) -> int | None:
     return None if text is None else local_date_ms(text, owner.time_zone)
 
 
-def _check_ends_before_later(
-    live: list[ZoneVersionRecord], identifier: str, new: NewZoneVersion, owner: ProgrammeRecord
-) -> None:
+def _check_ends_before_later(live: list[ZoneVersionRecord], new: ReadZone, owner: ProgrammeRecord) -> None:
     begins_ms, until_ms = _instant(new.in_force_from, owner), _instant(new.in_force_until, owner)
     for record in live:
         later = record.from_ms is not None and (begins_ms is None or record.from_ms > begins_ms)
         if later and (until_ms is None or until_ms > (record.from_ms or 0)):
             raise ZoneOverlap(
-                f"Zone {identifier!r}: the version from {new.in_force_from or 'ever'} until "
+                f"Zone {new.identifier!r}: the version from {new.in_force_from or 'ever'} until "
                 f"{new.in_force_until or 'open'} overlaps version {record.version}, in force from "
                 f"{record.in_force_from}. End it there with in_force_until, or send it with the same in_force_from "
                 "to correct that version."
             )
 
 
-def _says_the_same(connection: Connection, stored: ZoneVersionRecord, new: NewZoneVersion) -> bool:
+def _says_the_same(connection: Connection, stored: ZoneVersionRecord, new: ReadZone) -> bool:
     sent = connection.execute(
         select(schema.zone_version.c.geometry_sent).where(schema.zone_version.c.id == stored.key)
     ).scalar_one()
@@ -212,12 +188,13 @@ def _end(tx: WriteTransaction, keys: list[int]) -> None:
     tx.connection.execute(update(table).where(table.c.id.in_(keys)).values(ended_commit_no=tx.commit_no))
 
 
-def _insert(tx: WriteTransaction, owner: ProgrammeRecord, identifier: str, new: NewZoneVersion) -> None:
+def _insert(tx: WriteTransaction, owner: ProgrammeRecord, new: ReadZone) -> None:
     zone, table, connection = schema.zone, schema.zone_version, tx.connection
-    known = (zone.c.programme_id == owner.id) & (zone.c.identifier == identifier)
+    known = (zone.c.programme_id == owner.id) & (zone.c.identifier == new.identifier)
     changed = connection.execute(update(zone).where(known).values(revision=tx.commit_no))
     if changed.rowcount == 0:
-        connection.execute(insert(zone).values(programme_id=owner.id, identifier=identifier, revision=tx.commit_no))
+        values = {"programme_id": owner.id, "identifier": new.identifier, "revision": tx.commit_no}
+        connection.execute(insert(zone).values(values))
     zone_id = connection.execute(select(zone.c.id).where(known)).scalar_one()
     last = connection.execute(select(func.max(table.c.version)).where(table.c.zone_id == zone_id)).scalar_one()
     connection.execute(
@@ -230,8 +207,8 @@ def _insert(tx: WriteTransaction, owner: ProgrammeRecord, identifier: str, new: 
             season=new.season,
             edges=new.edges,
             geometry_sent=json.dumps(new.geometry_sent, allow_nan=False),
-            geometry=json.dumps(new.geometry, allow_nan=False),
-            notes=json.dumps(new.notes),
+            geometry=json.dumps(new.shape.to_geojson(), allow_nan=False),
+            notes=json.dumps(list(new.shape.notes)),
             commit_no=tx.commit_no,
         )
     )

@@ -79,5 +79,4 @@ def _zone_rows(connection: Connection, programme: str, wanted: ZoneUseFilter) ->
         count += len(page)
         if len(page) < READ_ROWS:
             return summary.rows(programme, wanted.zone or ""), count
-        last = page[-1]
-        after = (last.animal, last.month, last.zone, last.zone_version)
+        after = page[-1].place

@@ -1,4 +1,8 @@
-"""A real server for tests: the application behind uvicorn on a free port, its store in a directory."""
+"""A real server in the test's own process: the application behind uvicorn on a free port, its store in a directory.
+
+It starts in a fraction of a second, and takes a Settings. What is tested or measured by killing the process or by its
+memory needs :mod:`tests.running_server`.
+"""
 
 import socket
 import sqlite3

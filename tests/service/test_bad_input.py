@@ -13,6 +13,7 @@ from tests.service.running import KEY, running_server, stored
 TRACKS = "POST /tracks"
 ZONE = "PUT /zones/z"
 GEOJSON = "application/geo+json"
+JSON = "application/json"
 HEADER = "animal,time,lon,lat"
 GOOD = "a,2026-03-01T06:00:00Z,174.25,-36.5"
 SQUARE = [[10, 50], [11, 50], [11, 51], [10, 51], [10, 50]]
@@ -82,6 +83,9 @@ WHOLE_BODY = [
     Refused("broken quote", TRACKS, csv('"a,1'), 400, "not-csv", "Check the quotes"),
     Refused("not JSON", TRACKS, b'[{"animal": "a", "lon": NaN}]', 400, "not-json", "NaN", "application/json"),
     Refused("JSON cut off", TRACKS, b'[{"animal": "a"}', 400, "not-json", "after number", "application/json"),
+    Refused("number too long", TRACKS, b'[{"x":' + b"9" * 5000 + b"}]", 400, "not-json", "640 digits", JSON),
+    Refused("number too large", TRACKS, b'[{"x":1e' + b"9" * 20 + b"}]", 400, "not-json", "exponent", JSON),
+    Refused("nested too deeply", TRACKS, b"[" * 500 + b"]" * 500, 400, "not-json", "inside each other", JSON),
     Refused("JSON object", TRACKS, b"{}", 422, "not-an-array", "Send an array", "application/json"),
     Refused("JSON not UTF-8", TRACKS, b'[{"animal":"\xff"}]', 400, "not-utf-8", "UTF-8", "application/json"),
     Refused("body too large", TRACKS, TOO_LARGE, 413, "body-too-large", "SOJOURN_BODY_LIMIT_MB"),
@@ -111,6 +115,11 @@ ROWS = [
     bad_row(
         "never came", "a,2026-03-29T02:30:00,1,1", "time_skipped", "never came", call=f"{TRACKS}?time_zone=Europe/Oslo"
     ),
+    bad_row(
+        "end of the calendar", "a,9999-12-31T23:59:59,1,1", "bad_time", "not a time",
+        call=f"{TRACKS}?time_zone=America/New_York",
+    ),
+    bad_row("null byte", "a,2026-03-01T06:00:00Z\0,1,1", "bad_time", "not a time"),
     bad_row("negative error", f"{GOOD},-5", "error_not_positive", "sd_m -5 is not a positive", header=SD),
     bad_row("zero error", f"{GOOD},0", "error_not_positive", "sd_m 0 is not a positive", header=SD),
     bad_row("error NaN", f"{GOOD},NaN", "error_not_positive", "not a positive number", header=SD),
@@ -181,6 +190,10 @@ ZONES = [
         members={"code": "missing_id", "pointer": "/features/0"},
     ),
     Refused("zone too large", ZONE, TOO_LARGE, 413, "body-too-large", "in parts", GEOJSON),
+    bad_zone(
+        "beyond the calendar", feature(SQUARE, properties={"in_force_until": "9999-12-31T23:59:59.9999-23:59"}),
+        "date_out_of_range", "too far away", "/properties/in_force_until",
+    ),
     Refused("zone identifier", "PUT /zones/a%5Cb", feature(SQUARE), 422, "invalid-identifier", "backslash", GEOJSON),
     Refused(
         "zone never seen", ZONE, feature(SQUARE), 412, "precondition-failed", "nothing is stored", GEOJSON,
@@ -189,7 +202,6 @@ ZONES = [
 ]  # fmt: skip
 
 ANIMAL = "PUT /animals/a"
-JSON = "application/json"
 ANIMALS = [
     Refused("animal not JSON", ANIMAL, b"species: x", 400, "not-json", "Line 1", JSON),
     Refused("animal too large", ANIMAL, b" " * 1_000_001, 413, "body-too-large", "larger than 1000000 bytes", JSON),
@@ -205,6 +217,12 @@ ANIMALS = [
         "deployment backwards", ANIMAL, b'{"deployments": [{"start": "2026-02-01", "end": "2026-01-01"}]}', 422,
         "invalid-animal", "ends before it starts", JSON,
     ),
+    Refused("animal of another path", ANIMAL, b'{"animal": "b"}', 422, "invalid-animal", "the path of 'a'", JSON),
+    Refused(
+        "deployment for ever", ANIMAL, b'{"deployments": [{"start": "2026-01-01", "end": "9999-12-31"}]}', 422,
+        "invalid-animal", "too far away", JSON,
+    ),
+    Refused("animal nested too deeply", ANIMAL, b"[" * 500 + b"]" * 500, 400, "not-json", "inside each other", JSON),
     Refused("animal identifier", "PUT /animals/..%5C", b"{}", 422, "invalid-identifier", "backslash", JSON),
 ]  # fmt: skip
 

@@ -3,7 +3,13 @@
 import csv
 import io
 import json
+import os
+import signal
+import subprocess
+import sys
+import time
 from collections.abc import Iterator
+from functools import partial
 from pathlib import Path
 
 import httpx
@@ -112,11 +118,11 @@ def test_only_bad_rows_are_refused_and_still_written(tmp_path, capsys):
 @pytest.mark.parametrize(
     ("tracks", "zones", "said"),
     [
-        ("", None, "empty"),
-        ("animal,time,lon\n", None, "lat"),
-        (HEADER + GOOD_ROWS, "{", "JSON"),
-        (HEADER + GOOD_ROWS, '{"type": "FeatureCollection", "features": []}', "empty"),
-        (HEADER + GOOD_ROWS, '{"type": "Feature", "properties": {}, "geometry": null}', "no id"),
+        ("", None, "tracks.csv: The body is empty"),
+        ("animal,time,lon\n", None, "tracks.csv: A required column is missing: Missing: lat"),
+        (HEADER + GOOD_ROWS, "{", "zones.geojson: The body is not JSON"),
+        (HEADER + GOOD_ROWS, '{"type": "FeatureCollection", "features": []}', "zones.geojson: The body holds no rows"),
+        (HEADER + GOOD_ROWS, '{"type": "Feature", "properties": {}, "geometry": null}', "The feature has no id"),
     ],
 )
 def test_a_file_that_cannot_be_used_is_refused_in_plain_words(tmp_path, capsys, tracks, zones, said):
@@ -139,6 +145,30 @@ def test_a_missing_file_is_named(tmp_path, capsys):
     missing = tmp_path / "nowhere.csv"
     assert main(["estimate", str(missing), str(ZONES), "--out", str(tmp_path)]) == 2
     assert "nowhere.csv" in capsys.readouterr().err
+
+
+@pytest.mark.parametrize("number", [signal.SIGINT, signal.SIGTERM])
+def test_interrupted_it_stops_in_one_word_and_leaves_no_temporary_store(tmp_path, number):
+    """The temporary store holds positions."""
+    (tmp_path / "tracks.csv").write_text(HEADER + GOOD_ROWS)
+    temporary = tmp_path / "temporary"
+    temporary.mkdir()
+    files = [str(tmp_path / "tracks.csv"), str(ZONES), "--out", str(tmp_path / "out")]
+    command = [sys.executable, "-m", "service", "estimate", *files]
+    # Kernels are compiled anew here, so that there is time to interrupt.
+    environment = {**os.environ, "TMPDIR": str(temporary), "NUMBA_CACHE_DIR": str(tmp_path / "kernels")}
+    run = partial(subprocess.Popen, env=environment, stderr=subprocess.PIPE, text=True, start_new_session=True)
+    with run(command) as process:
+        while not (tmp_path / "out" / "rejected.csv").exists():
+            assert process.poll() is None, process.stderr.read()
+            time.sleep(0.02)
+        # To all its processes, as a terminal does.
+        os.killpg(process.pid, number)
+        said = process.stderr.read()
+        assert process.wait(timeout=60) == 130
+    assert said.splitlines()[-1] == "Stopped."
+    assert "Traceback" not in said
+    assert not list(temporary.glob("sojourn-estimate-*"))
 
 
 def test_a_bad_setting_is_refused_by_name(tmp_path, capsys, monkeypatch):

@@ -1,5 +1,6 @@
 """Zones and animals from whatever is sent."""
 
+import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
@@ -66,8 +67,26 @@ def test_a_collection_is_zones_or_a_problem(collection):
 @given(st.dictionaries(st.sampled_from([*ATTRIBUTES, "animal", "other"]), JSON, max_size=4))
 def test_attributes_are_complete_or_a_problem(body):
     try:
-        attributes = read_animal_attributes(body, "UTC")
+        attributes = read_animal_attributes(body, "a", "UTC")
     except Problem as refusal:
         assert refusal.status == 422  # noqa: PT017 - as above
     else:
         assert tuple(attributes) == ATTRIBUTES
+
+
+SQUARE = {"type": "Polygon", "coordinates": [[[10, 50], [11, 50], [11, 51], [10, 51], [10, 50]]]}
+
+
+@pytest.mark.parametrize("identifier", [7, "7", None])
+def test_the_id_of_a_feature_is_that_of_its_path_as_number_or_text(identifier):
+    feature = {"type": "Feature", "id": identifier, "properties": None, "geometry": SQUARE}
+    assert read_zone(feature, "7", "UTC").identifier == "7"
+
+
+def test_a_zone_twice_at_one_instant_is_refused_however_it_is_written():
+    features = [
+        {"type": "Feature", "id": "z", "properties": {"in_force_from": begins}, "geometry": SQUARE}
+        for begins in ("2026-01-01", "2025-12-31T11:00:00Z")
+    ]
+    with pytest.raises(Problem, match="there twice"):
+        read_zones({"type": "FeatureCollection", "features": features}, "Pacific/Auckland")

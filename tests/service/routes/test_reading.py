@@ -208,6 +208,15 @@ def test_the_api_document_describes_the_answers_and_the_problems(client):
     for calls in document["paths"].values():
         for call in calls.values():
             assert "application/problem+json" in call["responses"]["4XX"]["content"]
+    for method, path in (
+        ("put", "/zones/{zone}"),
+        ("post", "/zones"),
+        ("put", "/animals/{animal}"),
+        ("post", "/tracks"),
+    ):
+        assert {"200", "201"} <= document["paths"][path][method]["responses"].keys(), path
+    payload = document["paths"]["/submissions/{submission}/payload"]["get"]["responses"]["200"]
+    assert payload["content"].keys() == {"text/csv", "application/json", "application/geo+json"}
 
 
 def test_a_failure_of_the_server_is_a_problem_that_gives_nothing_away(tmp_path):

@@ -1,6 +1,10 @@
 """Posting tracks, animals and zones, and reading back what was sent."""
 
 import json
+import sqlite3
+import threading
+import time
+from contextlib import closing
 
 import pytest
 
@@ -197,3 +201,23 @@ def test_a_retired_zone_is_gone_and_may_come_back(client):
     assert client.delete("/zones/z").status_code == 404
     back = client.put("/zones/z", json=zone())
     assert [version["version"] for version in back.json()["versions"]] == [2]
+
+
+def test_readers_are_answered_while_many_writers_wait(client, tmp_path):
+    """Writers that wait for each other do not take all threads of the server."""
+    answers = []
+
+    def send(k):
+        answers.append(client.post("/tracks", content=rows(1, animal=f"a{k}"), headers=CSV).status_code)
+
+    senders = [threading.Thread(target=send, args=(k,)) for k in range(60)]
+    with closing(sqlite3.connect(tmp_path / "sojourn.db", isolation_level=None)) as another_writer:
+        another_writer.execute("BEGIN IMMEDIATE")
+        for sender in senders:
+            sender.start()
+        time.sleep(1)
+        assert client.get("/animals", timeout=5).json()["animals"] == []
+        another_writer.execute("ROLLBACK")
+    for sender in senders:
+        sender.join()
+    assert answers == [201] * 60

@@ -3,15 +3,17 @@
 import hashlib
 import io
 from collections.abc import Iterable, Sequence
+from dataclasses import replace
 
 import numpy as np
 
 from estimators import ERROR_KINDS, ZoneShape
 from service.readers.fix_rows import FixChunk, ReadOutcome, RejectedRow
+from service.readers.zones_geojson import ReadZone
 from service.store.animals import put_animal
 from service.store.database import DEFAULT_PROGRAMME, Store
 from service.store.submissions import Payload, Receipt, record_tracks
-from service.store.zones import NewZoneVersion, put_zone
+from service.store.zones import put_zone
 
 START_MS = 1_700_000_000_000
 HOUR_MS = 3_600_000
@@ -85,16 +87,14 @@ def zone(
     in_force_until: str | None = None,
     season: str | None = None,
     name: str | None = None,
-) -> NewZoneVersion:
+) -> ReadZone:
     shape = ZoneShape.from_geojson(geometry)
-    return NewZoneVersion(
-        name, in_force_from, in_force_until, season, "straight", geometry, shape.to_geojson(), list(shape.notes)
-    )
+    return ReadZone("", name, in_force_from, in_force_until, season, "straight", geometry, shape, [])
 
 
-def put(store: Store, identifier: str, version: NewZoneVersion) -> bool:
+def put(store: Store, identifier: str, version: ReadZone) -> bool:
     with store.write("zone") as tx:
-        return put_zone(tx, DEFAULT_PROGRAMME, identifier, version)[1]
+        return put_zone(tx, DEFAULT_PROGRAMME, replace(version, identifier=identifier))[1]
 
 
 def describe(store: Store, identifier: str, **attributes: object) -> bool:

@@ -63,6 +63,15 @@ def test_unusable_data_directory_is_refused(settings, tmp_path):
         Store.open(replace(settings, data=tmp_path / "file"))
 
 
+def test_tables_of_a_later_version_are_refused(store, settings):
+    """A store that a later version has used is not touched; the refusal says what to install."""
+    with store.write("test") as tx:
+        tx.connection.execute(text("UPDATE alembic_version SET version_num = '9999'"))
+    store.close()
+    with pytest.raises(StoreError, match=r"not known here: .*9999.* Install the version"):
+        Store.open(settings)
+
+
 def test_migrations_make_the_schema(store):
     """The migrations end in exactly the tables that the code uses."""
     with store.read() as connection:
@@ -117,3 +126,10 @@ def test_changed_settings_make_everything_stale(settings):
             revisions.append(get_programme(connection, DEFAULT_PROGRAMME).settings_revision)
         store.close()
     assert revisions[0] == revisions[1] < revisions[2]
+
+
+@pytest.mark.parametrize("name", ["what?", "half #2", "100%25", "ö b"])
+def test_everything_is_kept_in_the_data_directory_whatever_its_name(tmp_path, settings, name):
+    Store.open(replace(settings, data=tmp_path / name)).close()
+    assert (tmp_path / name / "sojourn.db").exists()
+    assert [path.name for path in tmp_path.iterdir() if path.is_file()] == []

@@ -75,6 +75,15 @@ def test_filters(filled):
     assert 0 < len(used) < len(everything)
 
 
+def test_time_that_nobody_knows_is_not_left_out_as_zero(store):
+    """A month without covered time is neither zero nor use."""
+    put(store, "home", zone(square(-0.05, -0.05)))
+    describe(store, "lost", deployments=[{"start": "2023-11-01", "end": "2023-12-01", "tag": None}])
+    publish_all(store)
+    [row] = rows(store, nonzero=True)
+    assert (row.animal, row.month, row.figures.probability_mass) == ("lost", "2023-11", None)
+
+
 def test_current_is_asked_of_what_the_filter_touches(filled):
     """A new fix of one animal leaves the answers about others current; a zone touches all."""
 
