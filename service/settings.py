@@ -67,7 +67,12 @@ class Settings:
             Values cannot be used; all of them are named.
         """
         values: dict[str, Any] = {"workers": os.cpu_count() or 1}
-        faults: list[str] = []
+        known = {setting.name for setting in SETTINGS}
+        faults = [
+            f"{name} is no setting. The settings are {', '.join(sorted(known))}."
+            for name in sorted(environment)
+            if name.startswith("SOJOURN_") and name not in known
+        ]
         for setting in SETTINGS:
             text = environment.get(setting.name, "")
             if not text:
@@ -94,7 +99,7 @@ class Settings:
         path = self.data / ADMIN_KEY_FILE
         try:
             if not path.exists():
-                self.data.mkdir(parents=True, exist_ok=True)
+                self.data.mkdir(mode=0o700, parents=True, exist_ok=True)
                 _write_private(path, secrets.token_urlsafe(32))
             return replace(self, admin_key=_key(path.read_text("ascii").strip()))
         except OSError as fault:

@@ -64,7 +64,8 @@ class Store:
             Another server has the data directory, or it or the database in it cannot be used.
         """
         try:
-            settings.data.mkdir(parents=True, exist_ok=True)
+            # Positions are for whoever runs the service; no other account of the machine may read them.
+            settings.data.mkdir(mode=0o700, parents=True, exist_ok=True)
             lock = _take_lock(settings.data / LOCK_FILE)
         except OSError as fault:
             raise StoreError(

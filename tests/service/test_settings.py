@@ -58,6 +58,12 @@ def test_all_bad_values_are_named_and_no_key_is_shown():
     assert "secret" not in str(refusal.value)
 
 
+def test_a_misspelt_setting_is_refused():
+    """SOJOURN_PROT must not leave the port at its default, unsaid."""
+    with pytest.raises(SettingsError, match="SOJOURN_PROT is no setting"):
+        Settings.from_environment({"SOJOURN_PROT": "9000", "PATH": "/bin"})
+
+
 def test_admin_key_is_made_once_and_kept_private(tmp_path):
     """The first start writes a key that only its owner can read; later starts read it; a given one is used as it is."""
     settings = Settings(data=tmp_path / "data")
