@@ -63,5 +63,13 @@ WIDE_SPREAD_SD_M: Final = 50_000.0
 Further out the plane frame of a step bends masses by more than about 1e-5.
 """
 
+WIDEST_SPREAD_M: Final = 5e5
+"""Largest standard deviation of a path, and distance of its mean from the straight path, metres.
+
+A plane frame can hold no more of the globe: within 6 of them, no zone or piece of one reaches the antipode. Larger
+ones, as from fixes that jump to the other side of the Earth, are taken as this wide; the row is flagged
+``wide_spread``.
+"""
+
 TRIVIAL_NUMERICAL_ERROR: Final = 2e-8
 """Numerical error of a mass that is 0 or 1 because no edge is in reach."""

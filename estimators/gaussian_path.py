@@ -12,7 +12,7 @@ from typing import Final
 import numpy as np
 from numpy.typing import NDArray
 
-from estimators.defaults import EDGE_REACH_SD, LONGEST_STEP_M
+from estimators.defaults import EDGE_REACH_SD, LONGEST_STEP_M, WIDEST_SPREAD_M
 from estimators.frames import WGS84, StepParts, carrying_rotation, east_north_axes, step_parts
 from estimators.track import Track
 
@@ -134,15 +134,23 @@ class GaussianPath:
         return np.column_stack([centre, np.maximum.reduceat(away, first)])
 
     def largest_sd_m(self) -> FloatArray:
-        """Upper bound of the standard deviation over each part, shape (n,), metres.
+        """Upper bound of the standard deviation over each part, shape (n,), metres."""
+        return _largest_sd_m(self.covariance_m2)
 
-        The covariance is a convex combination of its three Bernstein coefficients.
-        """
-        p0, p1, p2 = (self.covariance_m2[:, k] for k in range(3))
-        bernstein = np.stack([p0, p0 + 0.5 * p1, p0 + p1 + p2])
-        half = 0.5 * (bernstein[..., 0] + bernstein[..., 2])
-        swing = np.hypot(0.5 * (bernstein[..., 0] - bernstein[..., 2]), bernstein[..., 1])
-        return np.asarray(np.sqrt((half + swing).max(axis=0)))
+
+def _largest_sd_m(covariance_m2: FloatArray) -> FloatArray:
+    # The covariance is a convex combination of its three Bernstein coefficients.
+    p0, p1, p2 = (covariance_m2[:, k] for k in range(3))
+    bernstein = np.stack([p0, p0 + 0.5 * p1, p0 + p1 + p2])
+    half = 0.5 * (bernstein[..., 0] + bernstein[..., 2])
+    swing = np.hypot(0.5 * (bernstein[..., 0] - bernstein[..., 2]), bernstein[..., 1])
+    return np.asarray(np.sqrt((half + swing).max(axis=0)))
+
+
+def _at_most(values: FloatArray, size: FloatArray, limit: float) -> FloatArray:
+    """Values scaled down, entry by entry, where their size is above a limit."""
+    scale = np.minimum(1.0, limit / np.maximum(size, 1e-300))
+    return np.asarray(values * scale.reshape((-1,) + (1,) * (values.ndim - 1)))
 
 
 def path_between_fixes(
@@ -162,11 +170,12 @@ def path_between_fixes(
     -----
     With α the share of the step's time T, A and B the deviations at its ends: mean (1-α)E[A] + αE[B]; covariance
     (1-α)² Var A + α² Var B + α(1-α)(Cov(A, B) + Cov(B, A)) + α(1-α) T σ² (Horne et al. 2007, Appendix A, with
-    the cross-covariance of the ends added).
+    the cross-covariance of the ends added). Spreads beyond `WIDEST_SPREAD_M` are taken as that wide.
     """
     k, parts = steps.parts.step, steps.parts
-    mean_a = np.einsum("nij,nj->ni", steps.from_fix, marginals.mean_m[k])
-    mean_b = np.einsum("nij,nj->ni", steps.to_fix, marginals.mean_m[k + 1])
+    shift_m = _at_most(marginals.mean_m, np.linalg.norm(marginals.mean_m, axis=1), WIDEST_SPREAD_M)
+    mean_a = np.einsum("nij,nj->ni", steps.from_fix, shift_m[k])
+    mean_b = np.einsum("nij,nj->ni", steps.to_fix, shift_m[k + 1])
     var_a = _carried(steps.from_fix, marginals.covariance_m2[k], steps.from_fix)
     var_b = _carried(steps.to_fix, marginals.covariance_m2[k + 1], steps.to_fix)
     lag = _carried(steps.from_fix, marginals.lag_covariance_m2[k], steps.to_fix)
@@ -182,6 +191,7 @@ def path_between_fixes(
         ],
         axis=1,
     )
+    covariance = _at_most(covariance, _largest_sd_m(covariance) ** 2, WIDEST_SPREAD_M**2)
     e = parts.end_share[:, None]
     return GaussianPath(
         weight,

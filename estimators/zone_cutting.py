@@ -21,7 +21,7 @@ GIANT_RADIUS_M: Final = 0.7 * MEAN_RADIUS_M
 In the plane frame of a place, its antipode is infinitely far away in all directions, so no edge may come near there.
 """
 _PIECE_DEG: Final = 45
-_FOLLOWED_M: Final = 250.0
+_FOLLOWED_M: Final = 2000.0
 
 
 def cut_at_date_line(shape: MultiPolygon) -> MultiPolygon:
@@ -55,9 +55,9 @@ def pieces_by_degrees(shape: MultiPolygon) -> list[MultiPolygon]:
 
 
 def follow_geodesics(shape: MultiPolygon) -> MultiPolygon:
-    """A shape with geodesic edges as one with straight edges in longitude and latitude, each 250 m long.
+    """A shape with geodesic edges as one with straight edges in longitude and latitude, each 2 km long.
 
-    Those stay within R/8 · (L/R)² tan φ of the geodesic: 1 mm at 45° latitude, 7 mm at 80°.
+    Those stay within R/8 · (L/R)² tan φ of the geodesic: 8 cm at 45° latitude, half a metre at 80°.
     """
 
     def ring(positions: FloatArray) -> FloatArray:

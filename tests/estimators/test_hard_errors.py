@@ -85,3 +85,16 @@ def test_path_along_a_shared_meridian_belongs_to_one_side(lon_deg):
     track = track_of(np.full(20, lon_deg), lat, 50.0)
     west, east = corners(lon_deg - 1, 40, lon_deg, 50), corners(lon_deg, 40, lon_deg + 1, 50)
     assert [only_row(track, zone_of(ring)).time_fraction for ring in (west, east)] == [0.0, 1.0]
+
+
+WORLD = corners(-180, -90, 180, 90)
+
+
+@pytest.mark.parametrize("edges", ["straight", "geodesic"])
+@pytest.mark.parametrize("ends", [((10, 45), (-170, -45)), ((0, 90), (0, -90))])
+def test_the_whole_world_holds_an_animal_that_jumps_to_the_other_side_every_hour(ends, edges):
+    """Nonsense in, but no nonsense out: the mass is 1, and the row says that the spread is wide."""
+    lon, lat = np.array(ends * 5, float).T
+    use = rows_of(track_of(lon, lat, 100.0), [zone_of(WORLD, edges=edges)])
+    assert use.rows[0].probability_mass == pytest.approx(1.0, abs=1e-6)
+    assert "wide_spread" in use.months[0].flags
