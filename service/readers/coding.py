@@ -18,5 +18,7 @@ def coded(values: Sequence[Value]) -> tuple[NDArray[np.int64], list[Value]]:
     ----------
     values : sequence, length n
     """
+    if len(values) and values.count(values[0]) == len(values):
+        return np.zeros(len(values), dtype=np.int64), [values[0]]
     code_of = {value: code for code, value in enumerate(dict.fromkeys(values))}
     return np.fromiter(map(code_of.__getitem__, values), np.int64, len(values)), list(code_of)

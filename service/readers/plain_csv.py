@@ -26,7 +26,7 @@ def next_plain_columns(stream: BinaryIO, width: int) -> list[list[str]] | None:
     list of width lists of str, each of length n, or None
     """
     block = stream.read(BLOCK_BYTES) + stream.readline(LONGEST_LINE)
-    columns = _split(block.replace(b"\r\n", b"\n"), width)
+    columns = _split(block.replace(b"\r\n", b"\n") if b"\r" in block else block, width)
     if columns is None:
         stream.seek(-len(block), 1)
     return columns

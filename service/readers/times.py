@@ -70,29 +70,41 @@ def read_times(
 
 def _read_common_form(texts: Sequence[str]) -> tuple[NDArray[np.int64], NDArray[np.bool_]]:
     """Times ending in Z, read as a matrix of characters; which of the texts are such."""
-    if not texts or len(max(texts, key=len)) > _LONGEST:
+    length = np.fromiter(map(len, texts), np.int64, len(texts))
+    if not texts or length.max() > _LONGEST:
         return np.zeros(len(texts), dtype=np.int64), np.zeros(len(texts), dtype=bool)
     width = _LONGEST + 1
-    code = np.array(texts, dtype=f"U{width}").view(np.uint32).reshape(len(texts), width).astype(np.int64)
+    code = _codes(texts, length, width)
     digit = code - ord("0")
     is_digit = (digit >= 0) & (digit <= 9)
     good = np.all(is_digit[:, _DIGITS], axis=1)
     for place, allowed in _SEPARATORS.items():
-        good &= np.isin(code[:, place], [ord(sign) for sign in allowed])
-    length = np.fromiter(map(len, texts), np.int64, len(texts))
+        good &= np.logical_or.reduce([code[:, place] == ord(sign) for sign in allowed])
     good &= (length == 20) | (length > 21)
     good &= code[np.arange(len(texts)), np.maximum(length, 1) - 1] == ord("Z")
     good &= (length == 20) | (code[:, 19] == ord("."))
     # The fraction fills the places from 20 to the Z.
     in_fraction = np.arange(20, width) < (length - 1)[:, None]
     good &= np.all(is_digit[:, 20:] | ~in_fraction, axis=1)
-    millisecond = np.where(in_fraction[:, :3], digit[:, 20:23], 0) @ np.array([100, 10, 1])
+    millisecond = np.where(in_fraction[:, :3], digit[:, 20:23], 0).astype(np.int64) @ np.array([100, 10, 1])
     return _from_digits(digit, millisecond, good)
 
 
+def _codes(texts: Sequence[str], length: NDArray[np.int64], width: int) -> NDArray[np.int16]:
+    """Character codes of texts, shape (n, width), 0 beyond a text's end; all above 255 are 255."""
+    joined = "".join(texts)
+    if joined.isascii() and np.all(length == length[0]):
+        code = np.zeros((len(texts), width), dtype=np.int16)
+        code[:, : length[0]] = np.frombuffer(joined.encode(), dtype=np.uint8).reshape(len(texts), length[0])
+        return code
+    signs = np.array(texts, dtype=f"U{width}").view(np.uint32).reshape(len(texts), width)
+    return np.minimum(signs, 255).astype(np.int16)
+
+
 def _from_digits(
-    digit: NDArray[np.int64], millisecond: NDArray[np.int64], good: NDArray[np.bool_]
+    small_digit: NDArray[np.int16], millisecond: NDArray[np.int64], good: NDArray[np.bool_]
 ) -> tuple[NDArray[np.int64], NDArray[np.bool_]]:
+    digit = small_digit[:, :19].astype(np.int64)
     year = digit[:, 0:4] @ np.array([1000, 100, 10, 1])
     month, day, hour, minute, second = (digit[:, at] * 10 + digit[:, at + 1] for at in (5, 8, 11, 14, 17))
     good = good & (year > 0) & (month >= 1) & (month <= 12) & (day >= 1) & (hour < 24) & (minute < 60) & (second < 60)

@@ -45,11 +45,13 @@ def insert_rows(
     connection: Connection, table: Table | str, columns: Sequence[str], rows: Iterable[Sequence[Any]]
 ) -> None:
     """Insert rows through the driver, without a Python mapping per row."""
-    values = rows if isinstance(rows, list) else list(rows)
-    if values:
-        marks = ", ".join("?" * len(columns))
-        statement = f"INSERT INTO {table} ({', '.join(columns)}) VALUES ({marks})"
-        connection.exec_driver_sql(statement, values)
+    marks = ", ".join("?" * len(columns))
+    cursor: Any = connection.connection.cursor()
+    try:
+        # From an iterator the driver takes one row at a time, and no list of all of them is made.
+        cursor.executemany(f"INSERT INTO {table} ({', '.join(columns)}) VALUES ({marks})", rows)
+    finally:
+        cursor.close()
 
 
 def fetch_rows(connection: Connection, statement: str, parameters: tuple[Any, ...]) -> list[tuple[Any, ...]]:

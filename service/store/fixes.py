@@ -145,7 +145,7 @@ class FixRecorder:
     def _insert_plain(self, chunk: FixChunk, rows: IntArray, animal_id: IntArray, tag_id: IntArray) -> None:
         columns = (animal_id.tolist(), tag_id.tolist(), chunk.time_ms[rows].tolist(), repeat(self._tx.commit_no))
         values = zip(*columns, chunk.row[rows].tolist(), *_value_columns(chunk, rows), strict=False)
-        driver.insert_rows(self._tx.connection, schema.fix, COLUMNS, list(values))
+        driver.insert_rows(self._tx.connection, schema.fix, COLUMNS, values)
         self.new += len(rows)
 
     def _add_checked(self, chunk: FixChunk, rows: IntArray, animal_id: IntArray, tag_id: IntArray) -> list[RejectedRow]:
@@ -170,6 +170,9 @@ def _value_columns(chunk: FixChunk, rows: IntArray) -> list[Any]:
     columns: list[Any] = [chunk.lon_deg[rows].tolist(), chunk.lat_deg[rows].tolist()]
     if np.all(kinds < 0):
         return [*columns, *(repeat(None) for _ in range(4))]
-    covariance = chunk.covariance_m2[rows].astype(object)
-    covariance[kinds < 0] = None
-    return [*columns, [_KIND_NAMES[kind] for kind in kinds.tolist()], *(column.tolist() for column in covariance.T)]
+    columns.append(list(map(_KIND_NAMES.__getitem__, kinds.tolist())))
+    covariance = chunk.covariance_m2[rows]
+    if np.any(kinds < 0):
+        covariance = covariance.astype(object)
+        covariance[kinds < 0] = None
+    return [*columns, *(column.tolist() for column in covariance.T)]

@@ -38,7 +38,7 @@ def _path_and_cells(fixes: int) -> tuple[GaussianPath, Cells]:
 
 def _kernel() -> list[Row]:
     path, cells = _path_and_cells(FIXES)
-    zone = star_zone(300, 4_800.0)
+    zone = star_zone(300, 4_600.0)
     edges = zone.shape.boundaries[0]
     sums = integrated_zone_mass(path, edges, cells, len(path.steps))
     error = float((sums[:, 1] / cells.duration_ms).max())
@@ -79,7 +79,7 @@ def _against_raster(path: GaussianPath, cells: Cells, zone: Zone, sums: np.ndarr
 
 
 def _growth() -> list[Row]:
-    zones = [star_zone(300, 4_800.0)]
+    zones = [star_zone(300, 4_600.0)]
     seconds, peaks = [], []
     for fixes in (5_000, 50_000):
         track = home_track(fixes)
@@ -96,7 +96,7 @@ def _growth() -> list[Row]:
 
 def _far_zones() -> list[Row]:
     track = home_track(8_760)
-    near = [star_zone(300, 4_800.0)]
+    near = [star_zone(300, 4_600.0)]
     far: list[Zone] = [star_zone(300, 4_900.0, seed=k, lon_deg=60.0 + k) for k in range(100)]
 
     def seconds(zones: list[Zone]) -> float:
