@@ -8,9 +8,9 @@ import time
 from collections.abc import Iterator
 from pathlib import Path
 
-from estimators import Zone
-from tests.benchmarks.scenario import csv_of, home_track, star_zone, zone_features
-from tests.benchmarks.timing import Row
+from estimators import Zone, ZoneUseOptions, estimate_zone_use
+from tests.benchmarks.scenario import csv_of, home_track, star_zone, whole_span, zone_features
+from tests.benchmarks.timing import Row, median_s
 from tests.running_server import CSV, GEOJSON, RunningServer
 
 ANIMALS, FIXES_EACH, ZONES = 100, 8_760, 20
@@ -20,6 +20,7 @@ def rows() -> Iterator[Row]:
     """All figures of this file."""
     yield from _one_new_fix()
     yield from _stored_tracks_to_rows()
+    yield from _where_the_time_goes()
 
 
 def _zones() -> dict[str, Zone]:
@@ -49,6 +50,19 @@ def _stored_tracks_to_rows() -> list[Row]:
         Row("GET /zone-use, page of 1,000: p99 idle", f"{idle * 1000:.0f} ms", ""),
         Row("the same while it computes / idle", f"{busy / idle:.2f}", "2"),
     ]
+
+
+def _where_the_time_goes() -> list[Row]:
+    """One animal in this process: without zones, with one zone near, with one far away; the rest is the service's."""
+    track = home_track(FIXES_EACH)
+    span = whole_span(track)
+
+    def seconds(zones: list[Zone]) -> float:
+        return median_s(lambda: estimate_zone_use(track, span, zones, ZoneUseOptions()))
+
+    alone, near, far = seconds([]), seconds([star_zone(300, 4_800.0)]), seconds([star_zone(300, 4_800.0, lon_deg=60.0)])
+    figures = f"{alone * 1000:.0f} ms; {(near - alone) * 1000:.0f} ms; {max(far - alone, 0.0) * 1000:.1f} ms"
+    return [Row(f"one animal of {FIXES_EACH:,} fixes: fit and smooth; each zone near; each zone far", figures, "")]
 
 
 def _p99_s(server: RunningServer, seconds: float, until: threading.Event | None = None) -> float:
