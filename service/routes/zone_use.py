@@ -20,7 +20,7 @@ from service.routes.models import SummaryPage, ZoneUsePage
 from service.routes.parameters import MonthRangeParameters, ZoneUseParameters
 from service.routes.waiting import wait_if_preferred
 from service.routes.zones import unknown_zone
-from service.store.animals import get_animal
+from service.store.animals import get_animal, group_exists
 from service.store.zone_use_reading import ZoneUseFilter, touched_current, zone_use_page
 from service.store.zones import get_zone
 from service.writers.instants import utc_text
@@ -96,6 +96,9 @@ def _filter(
         raise unknown_animal(parameters.animal)
     if parameters.zone is not None and not get_zone(connection, programme, parameters.zone):
         raise unknown_zone(parameters.zone)
+    if parameters.group is not None and not group_exists(connection, programme, parameters.group):
+        detail = f"No animal is in a group {parameters.group[:100]!r}. Groups are stated by PUT /animals/{{animal}}."
+        raise Problem(404, "unknown-group", "There is no such group", detail)
     return ZoneUseFilter(
         parameters.animal, parameters.zone, parameters.group, parameters.month_from, parameters.month_to, nonzero
     )

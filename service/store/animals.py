@@ -66,6 +66,18 @@ def list_animals(connection: Connection, programme: str, after: str, limit: int)
     return [_record(row) for row in connection.execute(query.order_by(schema.animal.c.identifier).limit(limit))]
 
 
+def group_exists(connection: Connection, programme: str, group: str) -> bool:
+    """Whether any animal of a programme is in a group of that name."""
+    table = schema.animal_group
+    query = (
+        select(table.c.name)
+        .join_from(table, schema.animal, schema.animal.c.id == table.c.animal_id)
+        .join(schema.programme, schema.programme.c.id == schema.animal.c.programme_id)
+        .where(schema.programme.c.name == programme, table.c.name == group)
+    )
+    return connection.execute(query.limit(1)).first() is not None
+
+
 def put_animal(tx: WriteTransaction, programme: str, identifier: str, attributes: Mapping[str, Any]) -> bool:
     """Make an animal or replace its attributes; False where they are what is stored already."""
     stored = get_animal(tx.connection, programme, identifier)

@@ -2,7 +2,7 @@
 
 import numpy as np
 
-from estimators import Track, Zone, ZoneShape, ZoneUseOptions, estimate_zone_use
+from estimators import Track, Zone, ZoneShape, ZoneUseOptions, covariance_from_ellipse, estimate_zone_use
 from tests.estimators.simulated import START_MS
 
 HOUR_MS = 3_600_000
@@ -47,3 +47,10 @@ def fixed_variance(variance_m2_per_s):
         "median_m2_per_s": variance_m2_per_s,
         "log_sd": 0.0,
     }
+
+
+def needle_track(semi_minor_m):
+    """Three hourly fixes whose error is 50 km long and as wide as stated."""
+    errors = covariance_from_ellipse(np.full(3, 5e4), np.full(3, semi_minor_m), np.full(3, 37.0))
+    lon, lat = np.array([10, 10.01, 10.02]), np.array([45, 45.0, 45.01])
+    return Track.from_fixes(START_MS + np.arange(3) * HOUR_MS, lon, lat, errors, np.zeros(3, bool))

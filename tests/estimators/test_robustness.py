@@ -5,13 +5,13 @@ import pytest
 
 from estimators import (
     Track,
-    covariance_from_ellipse,
 )
 from tests.estimators.hard_cases import (
     DAY_MS,
     HOUR_MS,
     corners,
     fixed_variance,
+    needle_track,
     only_row,
     rows_of,
     track_of,
@@ -123,16 +123,8 @@ def test_error_of_any_size(sd_m):
 @pytest.mark.parametrize("semi_minor_m", [100.0, 1.0, 0.01])
 def test_needle_shaped_ellipses(semi_minor_m):
     """50 km long, down to a centimetre wide: zone and the rest still share the whole."""
-    errors = covariance_from_ellipse(np.full(3, 5e4), np.full(3, semi_minor_m), np.full(3, 37.0))
-    track = Track.from_fixes(
-        START_MS + np.arange(3) * HOUR_MS,
-        np.array([10, 10.01, 10.02]),
-        np.array([45, 45.0, 45.01]),
-        errors,
-        np.zeros(3, bool),
-    )
     inner = corners(9.9, 44.9, 10.1, 45.1)
     box_of = [zone_of(inner), zone_of(corners(0, 30, 20, 60), inner), zone_of(corners(0, 30, 20, 60))]
-    rows = rows_of(track, box_of).rows
+    rows = rows_of(needle_track(semi_minor_m), box_of).rows
     assert rows[0].probability_mass + rows[1].probability_mass == pytest.approx(rows[2].probability_mass, abs=3e-6)
     assert 0.01 < rows[0].probability_mass < 0.99

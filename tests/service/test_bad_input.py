@@ -233,6 +233,7 @@ READING = [
     get("submission that is no number", "/submissions/x/payload", 404, "unknown-submission", "'x'"),
     get("use of an unknown animal", "/zone-use?animal=nobody", 404, "unknown-animal", "'nobody'"),
     get("use of an unknown zone", "/zone-use?zone=nowhere", 404, "unknown-zone", "'nowhere'"),
+    get("use of an unknown group", "/zone-use?group=nobody", 404, "unknown-group", "'nobody'"),
     get("use in an unknown programme", "/zone-use?programme=other", 404, "unknown-programme", "'other'"),
     get("summary of an unknown zone", "/zone-use/summary?zone=nowhere", 404, "unknown-zone", "'nowhere'"),
     get("month 13", "/zone-use?from=2026-13", 400, "invalid-parameter", "from: '2026-13' is not a month"),
