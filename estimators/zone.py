@@ -130,6 +130,12 @@ class ZoneShape:
         polygon = follow_geodesics(self.polygon) if geodesic else self.polygon
         return tuple(zone_edges(piece, geodesic=False) for piece in pieces_by_degrees(cut_at_date_line(polygon)))
 
+    @property
+    def prepared_vertices(self) -> int:
+        """Vertices that `boundaries` holds, about 170 bytes each; 0 as long as nobody has asked for it."""
+        prepared: tuple[ZoneEdges, ...] = self.__dict__.get("boundaries", ())
+        return sum(len(edges.vertices_m) for edges in prepared)
+
     @cached_property
     def rough_ball_m(self) -> FloatArray | None:
         """Ball that surely holds the zone: Earth-centred centre and radius, shape (4,), metres; None if it is giant."""

@@ -6,7 +6,6 @@ import hashlib
 import json
 from collections.abc import Mapping
 from dataclasses import dataclass, replace
-from functools import lru_cache
 from typing import Any
 
 import numpy as np
@@ -30,6 +29,8 @@ IntArray = NDArray[np.int64]
 
 IMPLIED_DEPLOYMENT = "implied_deployment"
 _SHAPES_KEPT = 1024
+_VERTICES_KEPT = 3_000_000
+_kept_shapes: dict[tuple[str, str], ZoneShape] = {}
 
 
 @dataclass(frozen=True)
@@ -165,10 +166,16 @@ def _zone(stated: ZoneInput) -> Zone:
     return Zone(_shape(stated.geometry, stated.edges), stated.from_ms, stated.until_ms, season)
 
 
-@lru_cache(maxsize=_SHAPES_KEPT)
 def _shape(geometry: str, edges: str) -> ZoneShape:
     # Reading a shape and preparing its boundary costs more than one animal's integrals: kept between tasks.
-    return ZoneShape.from_geojson(json.loads(geometry), "geodesic" if edges == "geodesic" else "straight")
+    shape = _kept_shapes.get((geometry, edges))
+    if shape is None:
+        prepared = sum(kept.prepared_vertices for kept in _kept_shapes.values())
+        if prepared > _VERTICES_KEPT or len(_kept_shapes) >= _SHAPES_KEPT:
+            _kept_shapes.clear()
+        shape = ZoneShape.from_geojson(json.loads(geometry), "geodesic" if edges == "geodesic" else "straight")
+        _kept_shapes[geometry, edges] = shape
+    return shape
 
 
 def _flagged(facts: MonthFacts) -> MonthFacts:

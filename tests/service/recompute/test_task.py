@@ -7,6 +7,7 @@ import numpy as np
 import pytest
 
 from estimators import TrackError, ZoneUseOptions
+from service.recompute import task
 from service.recompute.task import AnimalInput, Fitted, ZoneInput, compute_animal
 from service.recompute.warm_up import warm_up
 from tests.service.store.sent import HOUR_MS, START_MS, square, walk
@@ -125,3 +126,15 @@ def test_unusable_fix_is_a_typed_failure():
 def test_warm_up_computes():
     """The first tiny computation works."""
     warm_up()
+
+
+def test_prepared_zones_are_forgotten_before_they_fill_the_memory(monkeypatch):
+    """A worker meets more zones than it can keep; the rows are the same."""
+    rows = walk("seal", 48)
+    kept = compute_animal(_animal(rows))
+    monkeypatch.setattr(task, "_VERTICES_KEPT", 0)
+    others = [replace(SQUARE, geometry=json.dumps(square(-0.01 - k, -0.01, 0.02))) for k in range(3)]
+    for other in others:
+        compute_animal(replace(_animal(rows), zones=(other, SQUARE)))
+        assert len(task._kept_shapes) <= 2
+    assert compute_animal(_animal(rows)).rows == kept.rows
