@@ -7,8 +7,9 @@ import os
 import signal
 import threading
 import time
-from collections.abc import Callable
+from collections.abc import Callable, Iterator
 from concurrent.futures import Executor, Future, ProcessPoolExecutor
+from contextlib import contextmanager
 from multiprocessing.context import SpawnContext, SpawnProcess
 from typing import Any
 
@@ -57,12 +58,34 @@ class WorkerPool:
         )
         # A process is started per waiting task: these are there before the first animal is.
         try:
-            for _ in range(self._workers):
-                executor.submit(os.getpid)
+            with _interruptions_deferred():
+                for _ in range(self._workers):
+                    executor.submit(os.getpid)
         except BaseException:
             self._context.kill_all()
             raise
         return executor
+
+
+@contextmanager
+def _interruptions_deferred() -> Iterator[None]:
+    """Let no Ctrl-C fall between the start of a process and the moment when it is known, or nobody would end it."""
+    if threading.current_thread() is not threading.main_thread():
+        # Python raises interruptions in the main thread only.
+        yield
+        return
+    came: list[int] = []
+    before = {
+        number: signal.signal(number, lambda arrived, _frame: came.append(arrived))
+        for number in (signal.SIGINT, signal.SIGTERM)
+    }
+    try:
+        yield
+    finally:
+        for number, handler in before.items():
+            signal.signal(number, signal.SIG_DFL if handler is None else handler)
+        if came:
+            signal.raise_signal(came[0])
 
 
 class _Worker(SpawnProcess):

@@ -133,6 +133,7 @@ def test_prepared_zones_are_forgotten_before_they_fill_the_memory(monkeypatch):
     rows = walk("seal", 48)
     kept = compute_animal(_animal(rows))
     monkeypatch.setattr(task, "_VERTICES_KEPT", 0)
+    monkeypatch.setattr(task, "_kept_shapes", {})
     others = [replace(SQUARE, geometry=json.dumps(square(-0.01 - k, -0.01, 0.02))) for k in range(3)]
     for other in others:
         compute_animal(replace(_animal(rows), zones=(other, SQUARE)))
