@@ -190,7 +190,8 @@ def _month_facts(animal: _Animal, fit: VariancePosterior) -> list[MonthFacts]:
     cells = _cells(animal.steps, animal.tracked)
     covered = np.bincount(cells.period, weights=cells.duration_ms, minlength=len(animal.months))
     widest = np.zeros(len(animal.months))
-    for path in animal.paths:
+    # A path of less weight cannot bend the mixture's mass by what the flag speaks of.
+    for path in (path for path in animal.paths if path.weight >= 0.01):
         spread_m = np.maximum(path.largest_sd_m(), path.largest_shift_m())
         np.maximum.at(widest, cells.period, spread_m[cells.part])
     facts = []

@@ -128,3 +128,9 @@ def test_needle_shaped_ellipses(semi_minor_m):
     rows = rows_of(needle_track(semi_minor_m), box_of).rows
     assert rows[0].probability_mass + rows[1].probability_mass == pytest.approx(rows[2].probability_mass, abs=3e-6)
     assert 0.01 < rows[0].probability_mass < 0.99
+
+
+def test_a_few_fixes_close_together_are_not_called_wide():
+    """Three fixes leave the movement variance wide open; its unlikely ends must not flag the row."""
+    use = rows_of(track_of([179.95, -179.97, -179.80], [-40.02, -40.01, -40.03], 20.0, step_ms=6 * HOUR_MS), [])
+    assert [facts.flags for facts in use.months] == [()]
